@@ -1,0 +1,1 @@
+"""The heading field: pure numpy, over arrays of any shape."""

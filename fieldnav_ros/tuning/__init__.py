@@ -1,0 +1,1 @@
+"""The tuner without ROS: space, cost, search, verdict, session and its ledger."""

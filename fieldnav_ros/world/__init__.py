@@ -1,0 +1,1 @@
+"""The built-in 2D simulator: plant, layouts, judge and the batched loop. Pure numpy."""
