@@ -1,0 +1,54 @@
+"""What chance does to an episode, drawn in full before it starts from the layout's seed.
+
+A tape belongs to its layout alone, so an episode is the same in a batch of thousands, alone in a node,
+and when it is run again.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import NamedTuple
+
+import numpy as np
+
+from fieldnav_ros.model import Layout
+from fieldnav_ros.parameters import FloatArray
+from fieldnav_ros.yard import Plant
+
+
+class Tapes(NamedTuple):
+    """Noise of each step and row, each (steps, N): pose errors (m, m, rad), grip (share), whether the pose is lost."""
+
+    x: FloatArray
+    y: FloatArray
+    yaw: FloatArray
+    grip: FloatArray
+    lost: np.ndarray
+
+    def keep(self, rows: np.ndarray) -> Tapes:
+        """Return the tapes of the rows that an index or mask picks."""
+        return Tapes(*(part[:, rows] for part in self))
+
+
+def is_quiet(plant: Plant) -> bool:
+    """Tell whether nothing is left to chance, so that no tape is needed."""
+    return not (plant.slip or plant.pose_noise or plant.yaw_noise or plant.pose_loss)
+
+
+def record(layouts: Sequence[Layout], plants: Sequence[Plant], steps: int) -> Tapes:
+    """Draw the tapes of ``layouts[i]`` on ``plants[i]`` for ``steps`` steps of the plant."""
+    parts = [_one(layout.seed, plant, steps) for layout, plant in zip(layouts, plants)]
+    return Tapes(*(np.stack(part, axis=1) for part in zip(*parts)))
+
+
+def _one(seed: int, plant: Plant, steps: int) -> Tapes:
+    rng = np.random.default_rng(seed)
+    normal = rng.standard_normal((3, steps))
+    uniform = rng.random((2, steps))
+    return Tapes(
+        plant.pose_noise * normal[0],
+        plant.pose_noise * normal[1],
+        plant.yaw_noise * normal[2],
+        1.0 - plant.slip * uniform[0],
+        uniform[1] < plant.pose_loss,
+    )
