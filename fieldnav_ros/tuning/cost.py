@@ -1,0 +1,31 @@
+"""Outcomes in seconds-equivalents, smaller is better."""
+
+from __future__ import annotations
+
+from fieldnav_ros.errors import InputError
+from fieldnav_ros.model import Outcome, OutcomeKind
+
+TIMEOUT = 1.2  # times the limit; common practice
+FAILURE = 2.0  # times the limit, for a contact or leaving the floor; common practice
+
+
+def cost_bound(time_limit: float) -> float:
+    """Return the largest cost of any outcome (s) under ``time_limit`` (s)."""
+    return FAILURE * time_limit
+
+
+def cost(outcome: Outcome, time_limit: float) -> float | None:
+    """Return what an outcome costs in s; None where it does not count.
+
+    An arrival costs its time, a timeout 1.2 times the limit, a contact or leaving the floor twice the
+    limit (common practice). An arrival reported later than the limit is no arrival: it costs a timeout.
+    """
+    if not time_limit > 0:
+        raise InputError.of("time limit", time_limit, "> 0 s")
+    if outcome.kind is OutcomeKind.VOID:
+        return None
+    if outcome.kind is OutcomeKind.ARRIVED and outcome.time <= time_limit:
+        return outcome.time
+    if outcome.kind in (OutcomeKind.ARRIVED, OutcomeKind.TIMEOUT):
+        return TIMEOUT * time_limit
+    return FAILURE * time_limit

@@ -1,0 +1,250 @@
+"""What can happen in a session, as frozen typed events. The ledger stores them; the state is a fold over them."""
+
+from __future__ import annotations
+
+from typing import Annotated, Any, Literal, Union
+
+from pydantic import Field, TypeAdapter, ValidationError
+
+from fieldnav_ros.errors import InputError
+from fieldnav_ros.model import Frozen, Layout, Outcome, Positive
+from fieldnav_ros.parameters import ParameterSet
+from fieldnav_ros.tuning.space import Prior
+
+Phase = Literal["search", "verdict"]
+Role = Literal["candidate", "control", "champion", "challenger"]
+Decision = Literal["accept", "keep"]
+NonNegative = Annotated[float, Field(ge=0)]
+Text = Annotated[str, Field(max_length=2000)]
+
+
+class SessionConfig(Frozen):
+    """What a session is told before it begins. Times in s."""
+
+    seed: int = Field(default=0, ge=0, description="everything random in the session comes from it")
+    floor_time_s: Positive = Field(description="floor time the session may use, resets included")
+    grade: str = Field(default="moving", min_length=1, description="grade of the yard that layouts are drawn from")
+    time_limit: Positive = Field(default=10.0, description="time allowed for an episode; scales the costs of failures")
+    population: int | None = Field(default=None, ge=4, le=1000, description="sets per generation; none: the engine's")
+    layouts: int = Field(default=4, ge=1, le=1000, description="layouts per generation, the same for all its sets")
+    sigma: float = Field(default=0.25, gt=0, le=1, description="first step size in the unit cube, without a prior")
+    control: bool = Field(default=True, description="run the champion in every block of the search, to see drift")
+    alpha: float = Field(default=0.05, gt=0, lt=1, description="bound on false acceptance over the whole session")
+    rounds: int = Field(default=2, ge=1, le=16, description="most verdicts in a session; alpha is shared among them")
+    verdict_share: float = Field(default=0.35, gt=0, lt=1, description="share of the floor time kept for the verdict")
+    least_pairs: int = Field(default=8, ge=1, description="fewest pairs that a verdict is begun with")
+    pairs_at_once: int = Field(default=1, ge=1, le=1000, description="pairs opened together; more suit a batch simulator")
+    episode_guess_s: Positive = Field(default=3.0, description="mean episode, until episodes have been seen")
+    reset_guess_s: NonNegative = Field(default=2.0, description="mean reset, until resets have been seen")
+
+
+class NamedSet(Frozen):
+    """A parameter set in a batch; ``unit`` is its point in the unit cube as the search proposed it."""
+
+    id: str
+    role: Role
+    parameters: ParameterSet
+    unit: tuple[float, ...] | None = None
+
+
+class Run(Frozen):
+    """One episode of a batch: which of its sets on which of its layouts."""
+
+    episode_id: int
+    set_index: int
+    layout_index: int
+
+
+class Episode(Frozen):
+    """An episode that can be run now. An id is used once: a voided episode is run again under a new one."""
+
+    id: int
+    phase: Phase
+    batch: int
+    set_id: str
+    role: Role
+    parameters: ParameterSet
+    layout: Layout
+    time_limit: float
+
+
+class SessionBegun(Frozen):
+    """First event of every ledger."""
+
+    kind: Literal["session_begun"] = "session_begun"
+    config: SessionConfig
+    champion_id: str = "initial"
+    champion: ParameterSet
+    prior: Prior | None = None
+
+
+class BatchOpened(Frozen):
+    """Episodes to run, in this order: a generation of the search, or pairs for the verdict."""
+
+    kind: Literal["batch_opened"] = "batch_opened"
+    phase: Phase
+    batch: int
+    sets: tuple[NamedSet, ...]
+    layouts: tuple[Layout, ...]
+    runs: tuple[Run, ...]
+
+
+class EpisodeScored(Frozen):
+    """An outcome that counts."""
+
+    kind: Literal["episode_scored"] = "episode_scored"
+    episode_id: int
+    outcome: Outcome
+    cost: float
+    floor_time_s: NonNegative
+    source: Text = "judge"
+
+
+class EpisodeVoided(Frozen):
+    """An episode that does not count and is run again, on the same layout, as ``rerun_id``.
+
+    Where its outcome was the last one, every decision that followed from it is taken back with it.
+    """
+
+    kind: Literal["episode_voided"] = "episode_voided"
+    episode_id: int
+    rerun_id: int
+    floor_time_s: NonNegative = 0.0
+    source: Text = "operator"
+
+
+class ReportIgnored(Frozen):
+    """A report that changes nothing (late, double, contradicting, unknown), kept for the record."""
+
+    kind: Literal["report_ignored"] = "report_ignored"
+    episode_id: int
+    outcome: Outcome | None = None
+    source: Text = "judge"
+    reason: Text
+
+
+class GenerationClosed(Frozen):
+    """Mean costs of a generation's candidates over the ``blocks`` layouts on which all of them ran.
+
+    ``costs`` is empty where there was no such layout. ``control`` is the champion's mean over the same layouts.
+    """
+
+    kind: Literal["generation_closed"] = "generation_closed"
+    batch: int
+    blocks: int
+    costs: tuple[float, ...]
+    control: float | None = None
+
+
+class ChallengerNamed(Frozen):
+    """The search hands a set to the verdict; ``alpha`` is this round's part of the session's."""
+
+    kind: Literal["challenger_named"] = "challenger_named"
+    round: int
+    set_id: str
+    parameters: ParameterSet
+    alpha: float
+
+
+class PairCompared(Frozen):
+    """One more pair of the verdict. ``difference`` is the champion's cost less the challenger's, in s."""
+
+    kind: Literal["pair_compared"] = "pair_compared"
+    round: int
+    pair: int
+    layout_index: int
+    champion_cost: float
+    challenger_cost: float
+    difference: float
+    log_evidence: float
+
+
+class VerdictReached(Frozen):
+    """``accept`` or ``keep``, and on what evidence (an e-value against its threshold)."""
+
+    kind: Literal["verdict_reached"] = "verdict_reached"
+    round: int
+    verdict: Decision
+    challenger_id: str
+    pairs: int
+    mean_difference: float | None
+    log_evidence: float
+    log_threshold: float
+    reason: Text
+
+
+class ChampionChanged(Frozen):
+    """Another set is in service from here on."""
+
+    kind: Literal["champion_changed"] = "champion_changed"
+    set_id: str
+    parameters: ParameterSet
+
+
+class FloorTimeUsed(Frozen):
+    """Floor time that went into something other than an episode."""
+
+    kind: Literal["floor_time_used"] = "floor_time_used"
+    seconds: NonNegative
+    why: Text
+
+
+class Paused(Frozen):
+    """No new episode begins until ``Resumed``."""
+
+    kind: Literal["paused"] = "paused"
+
+
+class Released(Frozen):
+    """Match call: the champion goes back in service, no new episode begins until ``Resumed``."""
+
+    kind: Literal["released"] = "released"
+
+
+class Resumed(Frozen):
+    """Episodes may begin again after a pause or a match call."""
+
+    kind: Literal["resumed"] = "resumed"
+
+
+class SessionEnded(Frozen):
+    """Nothing more will be run; the champion stays in service."""
+
+    kind: Literal["session_ended"] = "session_ended"
+    reason: Text
+
+
+class Noted(Frozen):
+    """Something worth keeping that changes no state (a stranger's parameter change, a restart, a warning)."""
+
+    kind: Literal["noted"] = "noted"
+    source: Text
+    text: Text
+
+
+Event = Annotated[
+    Union[
+        SessionBegun, BatchOpened, EpisodeScored, EpisodeVoided, ReportIgnored, GenerationClosed, ChallengerNamed,
+        PairCompared, VerdictReached, ChampionChanged, FloorTimeUsed, Paused, Released, Resumed, SessionEnded, Noted,
+    ],
+    Field(discriminator="kind"),
+]  # fmt: skip
+_ADAPTER: TypeAdapter[Event] = TypeAdapter(Event)
+
+
+def parse_event(payload: str | bytes, source: str = "event") -> Event:
+    """Read one event from JSON; InputError, one sentence, where it is none."""
+    try:
+        return _ADAPTER.validate_json(payload)
+    except ValidationError as error:
+        raise InputError.from_validation(error, source) from error
+
+
+def dump_event(event: Event) -> str:
+    """Return the event as JSON; ``parse_event`` gives it back, floats to the last bit."""
+    return event.model_dump_json()
+
+
+def event_schema() -> dict[str, Any]:
+    """Return the JSON Schema of all events."""
+    return _ADAPTER.json_schema()
