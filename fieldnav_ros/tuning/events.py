@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Any, Literal, Union
+from typing import Annotated, Any, Literal
 
 from pydantic import Field, TypeAdapter, ValidationError
 
@@ -33,7 +33,7 @@ class SessionConfig(Frozen):
     rounds: int = Field(default=2, ge=1, le=16, description="most verdicts in a session; alpha is shared among them")
     verdict_share: float = Field(default=0.35, gt=0, lt=1, description="share of the floor time kept for the verdict")
     least_pairs: int = Field(default=8, ge=1, description="fewest pairs that a verdict is begun with")
-    pairs_at_once: int = Field(default=1, ge=1, le=1000, description="pairs opened together; more suit a batch simulator")
+    pairs_at_once: int = Field(default=1, ge=1, le=1000, description="pairs opened together, for a batch simulator")
     episode_guess_s: Positive = Field(default=3.0, description="mean episode, until episodes have been seen")
     reset_guess_s: NonNegative = Field(default=2.0, description="mean reset, until resets have been seen")
 
@@ -222,13 +222,9 @@ class Noted(Frozen):
     text: Text
 
 
-Event = Annotated[
-    Union[
-        SessionBegun, BatchOpened, EpisodeScored, EpisodeVoided, ReportIgnored, GenerationClosed, ChallengerNamed,
-        PairCompared, VerdictReached, ChampionChanged, FloorTimeUsed, Paused, Released, Resumed, SessionEnded, Noted,
-    ],
-    Field(discriminator="kind"),
-]  # fmt: skip
+_Acts = SessionBegun | BatchOpened | EpisodeScored | EpisodeVoided | ReportIgnored | FloorTimeUsed | Noted
+_Decisions = GenerationClosed | ChallengerNamed | PairCompared | VerdictReached | ChampionChanged | SessionEnded
+Event = Annotated[_Acts | _Decisions | Paused | Released | Resumed, Field(discriminator="kind")]
 _ADAPTER: TypeAdapter[Event] = TypeAdapter(Event)
 
 
