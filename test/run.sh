@@ -1,0 +1,21 @@
+#!/usr/bin/env bash
+# All checks in one command: lint, types, tests (which build and try the package with colcon as well), in an
+# environment of its own. Arguments go to pytest.
+set -euo pipefail
+
+# shellcheck source=launch/environment.sh
+source "$(dirname "${BASH_SOURCE[0]}")/../launch/environment.sh"
+use_environment .venv-test test,colcon
+cd "$source_dir"
+
+# A ROS installation brings pytest plugins of its own, which not every pytest can load.
+if [ -n "${ROS_DISTRO:-}" ]; then
+    export PYTEST_DISABLE_PLUGIN_AUTOLOAD=1 PYTEST_ADDOPTS="${PYTEST_ADDOPTS:-} -p _hypothesis_pytestplugin"
+fi
+
+result=0
+ruff check . || result=1
+mypy || result=1
+[ "$result" -eq 0 ] || say "ruff or mypy found faults (above); running the tests all the same"
+pytest "$@" || result=$?
+exit "$result"
