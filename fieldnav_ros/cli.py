@@ -1,0 +1,97 @@
+"""The command line: ``fieldnav VERB``. Exit code 0 done, 1 the work failed, 2 bad input."""
+
+from __future__ import annotations
+
+import argparse
+import json
+import os
+import sys
+from collections.abc import Callable, Sequence
+from pathlib import Path
+from typing import Any
+
+from fieldnav_ros import __version__
+from fieldnav_ros.errors import FieldnavError, InputError
+
+SAFETY = (
+    "Robots can hurt: clear the floor, keep the hardware stop in hand. This software is no safety system; "
+    "local rules and the event's marshals come first."
+)
+Summary = dict[str, Any]
+"""What a verb has to tell a machine; its key ``ok`` says whether the work succeeded (true where left out)."""
+
+
+def number(name: str, low: float, high: float, kind: Callable[[str], float] = float) -> Callable[[str], Any]:
+    """Return an argument type that takes numbers from ``low`` to ``high`` only."""
+
+    def convert(text: str) -> float:
+        try:
+            value = kind(text)
+        except ValueError:
+            value = float("nan")
+        if not low <= value <= high:
+            noun = "a whole number" if kind is int else "a number"
+            raise InputError.of(name, text, f"{noun} from {low:g} to {high:g}")
+        return value
+
+    return convert
+
+
+def _demo(arguments: argparse.Namespace) -> Summary:
+    from fieldnav_ros.nodes.demo import run_demo  # rclpy is needed by this verb alone
+
+    return run_demo(arguments.out, arguments.floor_time, arguments.seed)
+
+
+def build_parser() -> argparse.ArgumentParser:
+    """Return the parser of all verbs."""
+    parser = _Parser(prog="fieldnav", description="Retune a robot's heading-field guidance.", epilog=SAFETY)
+    parser.add_argument("--version", action="version", version=f"fieldnav {__version__}")
+    verbs = parser.add_subparsers(dest="verb", required=True, metavar="VERB")
+    demo = _verb(verbs, "demo", _demo, "real nodes in simulation retune a robot on the parcel yard")
+    demo.add_argument("--out", type=Path, help="folder for the files (default: fieldnav_demo, numbered if it exists)")
+    demo.add_argument(
+        "--floor-time", type=number("--floor-time", 1, 600), default=24.0, metavar="MIN",
+        help="simulated minutes of floor time (default: %(default)g)",
+    )  # fmt: skip
+    demo.add_argument(
+        "--seed", type=number("--seed", 0, 2**31, int), default=1, help="seed of the session (default: %(default)s)"
+    )
+    return parser
+
+
+class _Parser(argparse.ArgumentParser):
+    """Tells of a wrong argument in one sentence, like every other error here."""
+
+    def error(self, message: str) -> Any:
+        raise InputError(f"{message}; see {self.prog} --help")
+
+
+def _verb(verbs: Any, name: str, run: Callable[[argparse.Namespace], Summary], about: str) -> argparse.ArgumentParser:
+    parser: argparse.ArgumentParser = verbs.add_parser(name, help=about, description=about.capitalize() + ".")
+    parser.set_defaults(run=run)
+    parser.add_argument("--json", action="store_true", help="last line on standard output: a summary as JSON")
+    return parser
+
+
+def main(argv: Sequence[str] | None = None) -> int:
+    """Run one verb and return the exit code."""
+    try:
+        arguments = build_parser().parse_args(argv)
+        summary = arguments.run(arguments)
+        if arguments.json:
+            print(json.dumps(summary), flush=True)
+        return 0 if summary.get("ok", True) else 1
+    except FieldnavError as error:
+        print(f"fieldnav: {error}", file=sys.stderr)
+        return error.exit_code
+    except KeyboardInterrupt:
+        print("fieldnav: stopped", file=sys.stderr)
+        return 1
+    except BrokenPipeError:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return 1
+
+
+if __name__ == "__main__":
+    raise SystemExit(main())

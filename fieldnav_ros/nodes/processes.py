@@ -1,0 +1,117 @@
+"""Starting nodes as processes of their own, and ending them, where no launch system does it."""
+
+from __future__ import annotations
+
+import os
+import random
+import signal
+import socket
+import subprocess
+import sys
+import tempfile
+from collections.abc import Mapping, Sequence
+from pathlib import Path
+from types import TracebackType
+from typing import IO
+
+from fieldnav_ros.errors import WorkError
+
+DOMAINS = range(1, 102)
+"""Domain ids whose ports are free on every platform (ROS 2 documentation, "The ROS_DOMAIN_ID")."""
+GRACE = 5.0
+"""Seconds that a node has between SIGINT and SIGKILL."""
+
+
+class Domain:
+    """A ROS domain of this machine alone, held for as long as this object lives.
+
+    A simulated robot's commands must not reach a real one: so never the domain that the user works in.
+    """
+
+    def __init__(self) -> None:
+        used = os.environ.get("ROS_DOMAIN_ID", "0")
+        choice = [number for number in DOMAINS if str(number) != used]
+        random.SystemRandom().shuffle(choice)
+        for number in choice:
+            lock = socket.socket()
+            try:
+                lock.bind(("127.0.0.1", 7300 + number))
+            except OSError:
+                lock.close()
+                continue
+            self.number, self._lock = number, lock
+            return
+        raise WorkError("no ROS domain is free on this machine")
+
+    def environment(self) -> dict[str, str]:
+        """Return the variables that keep a process to this domain and this machine."""
+        prefix = os.environ.get("AMENT_PREFIX_PATH") or sys.prefix
+        return {
+            "ROS_DOMAIN_ID": str(self.number),
+            "ROS_AUTOMATIC_DISCOVERY_RANGE": "LOCALHOST",
+            "AMENT_PREFIX_PATH": prefix,
+        }
+
+
+class Processes:
+    """Node processes that live and end together; a context manager."""
+
+    def __init__(self, environment: Mapping[str, str]) -> None:
+        self._environment = {**os.environ, **environment}
+        self._children: dict[str, tuple[subprocess.Popen[bytes], IO[bytes]]] = {}
+
+    def start(self, node: str, parameters: Mapping[str, object], files: Sequence[Path] = ()) -> None:
+        """Start ``fieldnav_ros.nodes.<node>`` with parameter files, then single parameters on top."""
+        words = [sys.executable, "-m", f"fieldnav_ros.nodes.{node}", "--ros-args"]
+        for file in files:
+            words += ["--params-file", str(file)]
+        for name, value in parameters.items():
+            words += ["-p", f"{name}:={_yaml(value)}"]
+        log = tempfile.TemporaryFile()  # noqa: SIM115  (closed in stop, with the child that writes to it)
+        child = subprocess.Popen(
+            words, env=self._environment, stdin=subprocess.DEVNULL, stdout=log, stderr=log, start_new_session=True
+        )
+        self._children[node] = (child, log)
+
+    def check(self) -> None:
+        """Raise WorkError, with the node's own last words, where one has ended."""
+        for node, (child, log) in self._children.items():
+            if child.poll() is not None:
+                raise WorkError(f"{node} ended with code {child.returncode}: {_last_words(log)}")
+
+    def stop(self) -> None:
+        """End all: SIGINT first, SIGKILL for whoever has not gone in time."""
+        for child, _ in self._children.values():
+            if child.poll() is None:
+                child.send_signal(signal.SIGINT)
+        for child, log in self._children.values():
+            try:
+                child.wait(GRACE)
+            except subprocess.TimeoutExpired:
+                child.kill()
+                child.wait()
+            log.close()
+        self._children.clear()
+
+    def __enter__(self) -> Processes:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self.stop()
+
+
+def _yaml(value: object) -> str:
+    if isinstance(value, bool):
+        return "true" if value else "false"
+    if isinstance(value, (str, Path)):
+        return "'" + str(value).replace("'", "''") + "'"
+    return str(value)
+
+
+def _last_words(log: IO[bytes]) -> str:
+    log.seek(0, os.SEEK_END)
+    log.seek(max(0, log.tell() - 2000))
+    lines = [line for line in log.read().decode(errors="replace").splitlines() if line.strip()]
+    return lines[-1] if lines else "no message"
