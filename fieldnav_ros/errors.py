@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import re
+import reprlib
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -11,11 +13,15 @@ if TYPE_CHECKING:
 class FieldnavError(Exception):
     """Base of all errors that this package raises on purpose.
 
-    ``str(error)`` is one sentence for the person at the terminal; ``exit_code`` is what the
-    command line ends with.
+    ``str(error)`` is one line for the person at the terminal, whatever file names and keys it quotes;
+    ``exit_code`` is what the command line ends with.
     """
 
     exit_code = 1
+
+    def __init__(self, sentence: str = "") -> None:
+        # line breaks, terminal escapes and lone surrogates come in with names from files
+        super().__init__("".join(sign if sign.isprintable() else " " for sign in sentence))
 
 
 class WorkError(FieldnavError):
@@ -42,22 +48,37 @@ class InputError(FieldnavError):
         return cls(sentence)
 
 
+class _Bounded(reprlib.Repr):
+    """``repr`` of bounded size and effort, also for nested containers and enormous integers."""
+
+    def repr_int(self, x: int, level: int) -> str:
+        # beyond some 4300 digits Python refuses to write an integer out in decimals
+        return super().repr_int(x, level) if x.bit_length() < 1024 else f"an integer of {x.bit_length()} bits"
+
+
 def shown(value: object, longest: int = 60) -> str:
     """Return ``repr(value)`` cut to ``longest`` characters, so that a 10 MB string stays a sentence."""
-    if isinstance(value, str) and len(value) > longest:
-        return repr(value[:longest]) + "..."
-    text = repr(value)
+    if isinstance(value, (str, bytes)):
+        text = repr(value[:longest])
+        return text + "..." if len(value) > longest else text
+    return clipped(_Bounded().repr(value), longest)
+
+
+def clipped(text: str, longest: int = 60) -> str:
+    """Return ``text`` as it is, cut to ``longest`` characters: for names that come from outside."""
     return text if len(text) <= longest else text[:longest] + "..."
 
 
 def _sentence(finding: Any) -> str:
-    where = ".".join(str(part) for part in finding["loc"]) or "value"
+    where = ".".join(clipped(str(part)) for part in finding["loc"]) or "value"
     kind, message = finding["type"], finding["msg"]
-    if kind == "extra_forbidden":
+    if kind in ("extra_forbidden", "invalid_key"):
         return f"{where} is not a known key"
     if kind == "missing":
         return f"{where} is missing"
-    message = message.removeprefix("Value error, ").removeprefix("Input should be ")
     if kind == "value_error":
+        message = message.removeprefix("Value error, ")
         return message if where == "value" else f"{where}: {message}"
-    return f"{where} is {shown(finding['input'])}, must be {message}"
+    # pydantic words its bounds "Input should be ...", "String should have ..."
+    bound = re.sub(r"^\w+ should ", "", message)
+    return f"{where} is {shown(finding['input'])}, must {bound}"

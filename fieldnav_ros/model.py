@@ -10,7 +10,9 @@ from typing import Annotated
 
 from pydantic import BaseModel, ConfigDict, Field
 
-Positive = Annotated[float, Field(gt=0)]
+Number = Annotated[float, Field(strict=True)]
+"""A float or an int; no text and no bool is taken for one."""
+Positive = Annotated[Number, Field(gt=0)]
 
 
 class Frozen(BaseModel):
@@ -22,18 +24,18 @@ class Frozen(BaseModel):
 class Pose(Frozen):
     """Where something is and which way it faces, in the floor's frame (m, m, rad)."""
 
-    x: float
-    y: float
-    yaw: float
+    x: Number
+    y: Number
+    yaw: Number
 
 
 class Obstacle(Frozen):
     """A disc that must not be touched, and how it moves (m, m/s)."""
 
-    x: float
-    y: float
-    vx: float = 0.0
-    vy: float = 0.0
+    x: Number
+    y: Number
+    vx: Number = 0.0
+    vy: Number = 0.0
     radius: Positive
 
 
@@ -77,7 +79,7 @@ class Outcome(Frozen):
     """How an episode ended, when (s after its start), and how close it came to touching (m)."""
 
     kind: OutcomeKind
-    time: float = Field(ge=0, description="seconds from the start of the episode to its end")
-    clearance: float | None = Field(
+    time: Number = Field(ge=0, description="seconds from the start of the episode to its end")
+    clearance: Number | None = Field(
         default=None, description="least gap to an obstacle or wall in m; none where nothing was near"
     )

@@ -9,14 +9,15 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from typing import Any, Literal, NamedTuple, cast
+from numbers import Real
+from typing import Any, Literal, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
-from pydantic import Field, ValidationError
+from pydantic import Field
 
-from fieldnav_ros.errors import InputError
-from fieldnav_ros.model import Frozen
+from fieldnav_ros.errors import InputError, clipped
+from fieldnav_ros.model import Frozen, Number
 
 Scale = Literal["linear", "log"]
 FloatArray = NDArray[np.float64]
@@ -51,39 +52,39 @@ def _number(
 class ParameterSet(Frozen):
     """Values of the nine tunable numbers; the field declarations are the table."""
 
-    turn_radius: float = _number(
+    turn_radius: Number = _number(
         "field", "d_e", "m", 0.15, 0.03, 0.40, "log",
         "radius of the two turning circles that line up with the goal heading",
     )  # fmt: skip
-    turn_softness: float = _number(
+    turn_softness: Number = _number(
         "field", "K_r", "m", 0.10, 0.005, 0.50, "log",
         "how gently the spirals bend towards those circles",
     )  # fmt: skip
-    motion_lead: float = _number(
+    motion_lead: Number = _number(
         "field", "K_o", "s", 0.10, 0.0, 0.60, "linear",
         "how far ahead an obstacle's relative motion shifts it",
     )  # fmt: skip
-    guard_distance: float = _number(
+    guard_distance: Number = _number(
         "field", "d_min", "m", 0.16, 0.08, 0.35, "log",
         "inside it, only avoidance counts",
     )  # fmt: skip
-    guard_fade: float = _number(
+    guard_fade: Number = _number(
         "field", "delta", "m", 0.10, 0.01, 0.30, "log",
         "width of the Gaussian hand-over from avoidance to approach",
     )  # fmt: skip
-    sidestep: float = _number(
+    sidestep: Number = _number(
         "field", "own", "rad", 0.30, 0.0, 1.5, "linear",
         "turns the repulsion towards the side that leads on to the goal",
     )  # fmt: skip
-    steer_gain: float = _number(
+    steer_gain: Number = _number(
         "drive", "K_w", "s^-1 rad^-1/2", 5.0, 1.0, 20.0, "log",
         "turn rate per square root of heading error",
     )  # fmt: skip
-    arrival_gain: float = _number(
+    arrival_gain: Number = _number(
         "drive", "K_p", "s^-1", 3.0, 1.0, 10.0, "log",
         "slows down with the distance left",
     )  # fmt: skip
-    lateral_accel: float = _number(
+    lateral_accel: Number = _number(
         "drive", "R_m", "m s^-2", 1.5, 0.3, 6.0, "log",
         "bounds speed times turn rate",
     )  # fmt: skip
@@ -95,19 +96,18 @@ class ParameterSet(Frozen):
         Raises InputError, naming the parameter, its value and the bound, on an unknown name, a value
         that is no number, NaN, infinity or out of range.
         """
-        short = {parameter.ros_name: parameter.name for parameter in TABLE}
-        fields: dict[str, object] = {}
+        fields = {}
         for name, value in values.items():
-            if name not in short:
-                raise InputError(f"{source}: {name} is not a known parameter")
-            number = isinstance(value, (int, float)) and not isinstance(value, bool)
-            parameter = BY_NAME[short[name]]
-            if not number or not parameter.low <= cast(float, value) <= parameter.high:
-                raise InputError.of(
-                    f"{source}: {name}", value, f"a number from {parameter.low:g} to {parameter.high:g} {parameter.unit}"
-                )
-            fields[short[name]] = value
-        return cls(**fields)  # type: ignore[arg-type]  # pydantic checks what the mapping holds
+            if name not in BY_ROS_NAME:
+                raise InputError(f"{source}: {clipped(str(name))} is not a known parameter")
+            parameter = BY_ROS_NAME[name]
+            # a bool is an int to Python and a NumPy number is none, hence Real and not bool; NaN fails the comparison
+            number = isinstance(value, Real) and not isinstance(value, bool)
+            if not number or not parameter.low <= value <= parameter.high:  # type: ignore[operator]  # a Real
+                bound = f"a number from {parameter.low:g} to {parameter.high:g} {parameter.unit}"
+                raise InputError.of(f"{source}: {name}", value, bound)
+            fields[parameter.name] = float(value)  # type: ignore[arg-type]  # a Real
+        return cls(**fields)
 
     def to_ros(self) -> dict[str, float]:
         """Return the set under its ROS parameter names, in table order."""
@@ -115,13 +115,10 @@ class ParameterSet(Frozen):
 
     @classmethod
     def from_array(cls, values: Sequence[float] | FloatArray) -> ParameterSet:
-        """Make a set from nine values in table order; InputError where one is out of its range."""
+        """Make a set from nine values in table order; InputError as ``from_ros`` where one is not usable."""
         if len(values) != len(TABLE):
             raise InputError.of("number of parameter values", len(values), str(len(TABLE)))
-        try:
-            return cls(**{p.name: float(v) for p, v in zip(TABLE, values)})
-        except ValidationError as error:
-            raise InputError.from_validation(error, "parameters") from error
+        return cls.from_ros({parameter.ros_name: value for parameter, value in zip(TABLE, values)})
 
     def to_array(self) -> FloatArray:
         """Return the nine values in table order."""
@@ -152,18 +149,21 @@ class Parameter:
         return f"{self.group}.{self.name}"
 
     def to_unit(self, value: float) -> float:
-        """Map ``low..high`` to 0..1 on the parameter's own scale."""
+        """Map a value from ``low..high`` to 0..1 on the parameter's own scale."""
         if self.scale == "log":
             return math.log(value / self.low) / math.log(self.high / self.low)
         return (value - self.low) / (self.high - self.low)
 
     def from_unit(self, unit: float) -> float:
-        """Map 0..1 back to ``low..high``; the result never leaves the range."""
+        """Map 0..1 back to ``low..high``; the result never leaves the range. InputError on NaN."""
+        if math.isnan(unit):
+            raise InputError.of(f"place of {self.ros_name} in its range", unit, "a number from 0 to 1")
+        unit = min(max(unit, 0.0), 1.0)
         if self.scale == "log":
             value = self.low * math.exp(unit * math.log(self.high / self.low))
         else:
             value = self.low + unit * (self.high - self.low)
-        return min(max(value, self.low), self.high)
+        return min(max(value, self.low), self.high)  # rounding may carry it past a bound
 
 
 def _row(name: str, field: Any) -> Parameter:
@@ -180,6 +180,7 @@ def _row(name: str, field: Any) -> Parameter:
 
 TABLE: tuple[Parameter, ...] = tuple(_row(name, field) for name, field in ParameterSet.model_fields.items())
 BY_NAME: dict[str, Parameter] = {parameter.name: parameter for parameter in TABLE}
+BY_ROS_NAME: dict[str, Parameter] = {parameter.ros_name: parameter for parameter in TABLE}
 DEFAULTS = ParameterSet()
 
 

@@ -3,16 +3,23 @@
 from __future__ import annotations
 
 import math
+import re
 from pathlib import Path
 from typing import Annotated, Any
 
 import yaml
 from pydantic import AfterValidator, Field, ValidationError, model_validator
+from yaml.composer import ComposerError
+from yaml.constructor import ConstructorError
 
-from fieldnav_ros.errors import InputError, shown
-from fieldnav_ros.model import Frozen, Positive, Robot
+from fieldnav_ros.errors import InputError, clipped, shown
+from fieldnav_ros.model import Frozen, Number, Positive, Robot
 
-LARGEST_FILE = 1 << 20
+LARGEST_FILE = 1 << 16
+"""Most bytes of a file that are read: twenty times what a yard takes, and read in seconds at worst."""
+FARTHEST = 500.0
+"""Bound of coordinates in m: nearer than where ``world.carts`` keeps carts that take no part."""
+ROUNDING = 1e-9
 
 
 def _ordered(pair: tuple[float, float]) -> tuple[float, float]:
@@ -21,9 +28,9 @@ def _ordered(pair: tuple[float, float]) -> tuple[float, float]:
     return pair
 
 
-Range = Annotated[tuple[float, float], AfterValidator(_ordered)]
-NonNegative = Annotated[float, Field(ge=0)]
-Share = Annotated[float, Field(ge=0, le=1)]
+Coordinate = Annotated[Number, Field(ge=-FARTHEST, le=FARTHEST)]
+Range = Annotated[tuple[Coordinate, Coordinate], AfterValidator(_ordered)]
+NonNegative = Annotated[Number, Field(ge=0)]
 FULL_TURN: tuple[float, float] = (-math.pi, math.pi)
 
 
@@ -32,7 +39,7 @@ class Floor(Frozen):
 
     x: Range
     y: Range
-    walled: bool = True
+    walled: bool = Field(default=True, strict=True)
 
 
 class Region(Frozen):
@@ -53,7 +60,7 @@ class Arrival(Frozen):
 class Grade(Frozen):
     """How hard the floor is: other carts, their speeds (m/s), time allowed (s)."""
 
-    carts: int = Field(default=0, ge=0, le=100)
+    carts: int = Field(default=0, ge=0, le=100, strict=True)
     speed: Range = (0.0, 0.0)
     time_limit: Positive = Field(le=600)
 
@@ -67,14 +74,14 @@ class Grade(Frozen):
 class Plant(Frozen):
     """How the simulated robot departs from the ideal one; ranges are what a real cart shows."""
 
-    accel_scale: float = Field(default=1.0, gt=0, le=2, description="real over nominal wheel acceleration")
-    command_delay: float = Field(default=0.0, ge=0, le=0.5, description="s from command to wheels")
-    wheel_mismatch: float = Field(default=0.0, ge=-0.3, le=0.3, description="right over left wheel speed, less one")
-    slip: float = Field(default=0.0, ge=0, le=0.5, description="share of wheel travel lost, drawn anew each step")
-    pose_noise: float = Field(default=0.0, ge=0, le=0.1, description="standard deviation of x and y in m")
-    yaw_noise: float = Field(default=0.0, ge=0, le=0.5, description="standard deviation of yaw in rad")
-    pose_loss: float = Field(default=0.0, ge=0, le=0.9, description="share of poses that never come")
-    pose_rate: float = Field(default=50.0, ge=5, le=100, description="poses per second")
+    accel_scale: Number = Field(default=1.0, gt=0, le=2, description="real over nominal wheel acceleration")
+    command_delay: Number = Field(default=0.0, ge=0, le=0.5, description="s from command to wheels")
+    wheel_mismatch: Number = Field(default=0.0, ge=-0.3, le=0.3, description="right over left wheel speed, less one")
+    slip: Number = Field(default=0.0, ge=0, le=0.5, description="largest share of a step's wheel travel lost")
+    pose_noise: Number = Field(default=0.0, ge=0, le=0.1, description="standard deviation of x and y in m")
+    yaw_noise: Number = Field(default=0.0, ge=0, le=0.5, description="standard deviation of yaw in rad")
+    pose_loss: Number = Field(default=0.0, ge=0, le=0.9, description="share of poses that never come")
+    pose_rate: Number = Field(default=50.0, ge=5, le=100, description="poses per second")
 
 
 class Yard(Frozen):
@@ -102,10 +109,22 @@ class Yard(Frozen):
             for axis in ("x", "y"):
                 low, high = getattr(self.floor, axis)
                 first, last = getattr(region, axis)
-                if first < low + margin or last > high - margin:
+                if first < low + margin - ROUNDING or last > high - margin + ROUNDING:
                     raise ValueError(
                         f"{name}.{axis} is [{first:g}, {last:g}], must lie from {low + margin:g} to {high - margin:g}"
                         f" to keep the robot (radius {self.robot.radius:g} m) out of the walls"
+                    )
+        return self
+
+    @model_validator(mode="after")
+    def _carts_fit(self) -> Yard:
+        if any(grade.carts for grade in self.grades.values()):
+            for axis in ("x", "y"):
+                low, high = getattr(self.floor, axis)
+                if 2.0 * self.cart_radius > high - low:
+                    raise ValueError(
+                        f"cart_radius is {self.cart_radius:g}, must be at most {0.5 * (high - low):g}"
+                        f" to fit a cart between the ends of floor.{axis}"
                     )
         return self
 
@@ -116,19 +135,61 @@ class Yard(Frozen):
         return self.grades[name]
 
 
+class _Loader(yaml.SafeLoader):
+    """Safe loading that also refuses what would grow or vanish unseen: aliases and keys given twice."""
+
+    def compose_node(self, parent: Any, index: Any) -> Any:
+        # a few lines of aliases of aliases stand for billions of values; ROS parameter files have none either
+        if self.check_event(yaml.AliasEvent):
+            mark = self.peek_event().start_mark  # type: ignore[no-untyped-call]  # PyYAML's stubs leave it open
+            raise ComposerError(None, None, "aliases (*name) are not allowed", mark)
+        return super().compose_node(parent, index)
+
+    def construct_mapping(self, node: Any, deep: bool = False) -> Any:
+        mapping = super().construct_mapping(node, deep)
+        if len(mapping) < len(node.value):
+            seen = set()
+            for key_node, _ in node.value:
+                key = self.construct_object(key_node, deep=True)
+                if key in seen:
+                    raise ConstructorError(None, None, f"key {shown(key)} is given twice", key_node.start_mark)
+                seen.add(key)
+        return mapping
+
+
+# PyYAML speaks YAML 1.1, where 1e-3 is text; here it is the number of YAML 1.2 (core schema) and of ROS
+_Loader.add_implicit_resolver(
+    "tag:yaml.org,2002:float", re.compile(r"^[-+]?(\d+\.?\d*|\.\d+)[eE][-+]?\d+$"), list("-+.0123456789")
+)
+# what PyYAML's own constructors let through on scalars that do not fit an explicit tag
+_MALFORMED = (yaml.YAMLError, ValueError, ArithmeticError, LookupError, AttributeError, TypeError, RecursionError)
+
+
 def read_yaml(path: Path) -> Any:
-    """Read a YAML file by safe loading only; InputError in one sentence for whatever is wrong with it."""
+    """Read a YAML file by safe loading only; InputError in one sentence for whatever is wrong with it.
+
+    Plain types alone come back. Aliases and keys given twice are refused, larger files than LARGEST_FILE too.
+    """
     try:
-        if path.stat().st_size > LARGEST_FILE:
-            raise InputError.of(f"{path}: size in bytes", path.stat().st_size, f"at most {LARGEST_FILE}")
-        return yaml.safe_load(path.read_text(encoding="utf-8"))
-    except OSError as error:
-        raise InputError(f"{path}: {error.strerror or error}") from error
-    except (yaml.YAMLError, UnicodeDecodeError, RecursionError, ValueError) as error:
-        mark = getattr(error, "problem_mark", None)
-        where = f" at line {mark.line + 1}" if mark else ""
-        problem = getattr(error, "problem", None) or type(error).__name__
-        raise InputError(f"{path}: not readable as YAML{where}: {problem}") from error
+        with path.open("rb") as file:
+            raw = file.read(LARGEST_FILE + 1)
+    except (OSError, ValueError) as error:  # ValueError: a path that no file can have
+        raise InputError(f"{path}: {getattr(error, 'strerror', None) or error}") from error
+    if len(raw) > LARGEST_FILE:
+        raise InputError(f"{path}: is too large, must be at most {LARGEST_FILE} bytes")
+    try:
+        return yaml.load(raw.decode("utf-8"), Loader=_Loader)
+    except _MALFORMED as error:
+        raise InputError(f"{path}: not readable as YAML{_problem(error)}") from error
+
+
+def _problem(error: Exception) -> str:
+    mark = getattr(error, "problem_mark", None)
+    where = f" at line {mark.line + 1}" if mark else ""
+    if isinstance(error, RecursionError):
+        return f"{where}: nested too deeply"
+    problem = getattr(error, "problem", None) or getattr(error, "reason", None)
+    return f"{where}: {clipped(problem or 'a value does not fit its type', 200)}"
 
 
 def load_yard(path: str | Path) -> Yard:

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 
+from fieldnav_ros.errors import InputError
 from fieldnav_ros.guide import Memory, Senses, guide
 from fieldnav_ros.model import KINDS, Layout, Outcome, OutcomeKind
 from fieldnav_ros.parameters import FloatArray, Numbers, ParameterSet, stack
@@ -19,7 +20,11 @@ from fieldnav_ros.yard import Plant, Yard
 
 CHUNK = 2048
 """Rows that are stepped together: their working set stays in a core's own cache."""
+TAPE_CELLS = 1 << 22
+"""Most rows times steps that are stepped together: bounds the memory that noise tapes take."""
 COMPACT_EVERY = 25
+LONGEST = 600.0
+"""Longest time limit in s, as for a grade."""
 
 
 @dataclass(frozen=True)
@@ -42,7 +47,7 @@ class BatchResult:
 
     def share(self, kind: OutcomeKind) -> FloatArray:
         """Return, for each set, the share of layouts that ended this way."""
-        return np.mean(self.code == kind.code, axis=1)
+        return np.asarray(np.mean(self.code == kind.code, axis=1))
 
 
 def simulate(
@@ -56,28 +61,47 @@ def simulate(
 ) -> BatchResult:
     """Run every set on every layout.
 
-    ``plants`` gives each layout a plant of its own (default: the yard's for all); ``time_limit`` (s)
-    overrides the grade's. ``steps`` of the result counts robot-steps of STEP seconds.
+    ``plants`` gives each layout a plant of its own (default: the yard's for all); ``time_limit`` (s, up to
+    600) overrides the grade's. ``steps`` of the result counts robot-steps of STEP seconds. A row's result does
+    not depend on the others. Rows of one pose rate are stepped together, so few different rates run faster.
+    Raises InputError where there is no layout or set, or where plants and layouts differ in number.
     """
     count = len(layouts)
     per_layout = [yard.plant] * count if plants is None else list(plants)
     limit = yard.grade(grade).time_limit if time_limit is None else time_limit
+    _check(count, len(sets), len(per_layout), limit)
     numbers = stack(sets, count)
-    rows = np.tile(np.arange(count), len(sets))
-    parts = []
-    for first in range(0, len(rows), CHUNK):
-        here = slice(first, first + CHUNK)
-        chunk = rows[here]
-        parts.append(
-            _Run(
-                yard, [layouts[i] for i in chunk], [per_layout[i] for i in chunk],
-                Numbers(*(part[here] for part in numbers)), model, limit,
-            ).finish()
+    column = np.tile(np.arange(count), len(sets))
+    code, time, clearance = np.empty(len(column), dtype=int), np.empty(len(column)), np.empty(len(column))
+    steps = 0
+    most = max(1, min(CHUNK, TAPE_CELLS // max(1, round(limit / STEP))))
+    for rows in _chunks(np.array([plant.pose_rate for plant in per_layout])[column], most):
+        run = _Run(
+            yard, [layouts[i] for i in column[rows]], [per_layout[i] for i in column[rows]],
+            Numbers(*(part[rows] for part in numbers)), model, limit,
         )  # fmt: skip
-    code, time, clearance = (np.concatenate([part[i] for part in parts]) for i in range(3))
+        code[rows], time[rows], clearance[rows], taken = run.finish()
+        steps += taken
     shape = (len(sets), count)
-    total = sum(part[3] for part in parts)
-    return BatchResult(code.reshape(shape), time.reshape(shape), clearance.reshape(shape), total)
+    return BatchResult(code.reshape(shape), time.reshape(shape), clearance.reshape(shape), steps)
+
+
+def _check(layouts: int, sets: int, plants: int, limit: float) -> None:
+    for name, number in (("layouts", layouts), ("parameter sets", sets)):
+        if number < 1:
+            raise InputError.of(f"number of {name}", number, "at least 1")
+    if plants != layouts:
+        raise InputError.of("number of plants", plants, f"that of the layouts, {layouts}")
+    if not 0.0 < limit <= LONGEST:
+        raise InputError.of("time limit", limit, f"> 0 and at most {LONGEST:g} s")
+
+
+def _chunks(pose_rate: FloatArray, most: int) -> Iterator[np.ndarray]:
+    """Yield the indices of rows that are stepped together: ``most`` at a time, of one pose rate."""
+    for rate in np.unique(pose_rate):
+        rows = np.flatnonzero(pose_rate == rate)
+        for first in range(0, len(rows), most):
+            yield rows[first : first + most]
 
 
 class _Run:

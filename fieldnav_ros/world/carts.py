@@ -12,7 +12,7 @@ from fieldnav_ros.model import Layout
 from fieldnav_ros.yard import Floor
 
 FAR = 1000.0
-"""Where rows with fewer carts than others keep the rest, in m: outside every floor, and standing."""
+"""Where rows with fewer carts than others keep the rest, in m: outside every floor, standing, of radius 0."""
 
 
 def gather(layouts: Sequence[Layout]) -> Obstacles:
@@ -36,7 +36,9 @@ def move(carts: Obstacles, floor: Floor, dt: float) -> Obstacles:
 def _bounce(place: Any, speed: Any, radius: Any, side: tuple[float, float], dt: float) -> tuple[Any, Any]:
     low, high = side[0] + radius, side[1] - radius
     moved = place + speed * dt
-    # only a cart on its way out turns round, so that one which stands outside stays where it was put
+    back = place - speed * dt
+    # only a cart on its way out turns round; one put beyond the wall comes back at its speed instead of jumping
     beyond_low, beyond_high = (moved < low) & (speed < 0.0), (moved > high) & (speed > 0.0)
-    moved = np.where(beyond_low, 2.0 * low - moved, np.where(beyond_high, 2.0 * high - moved, moved))
+    moved = np.where(beyond_low, np.minimum(2.0 * low - moved, back), moved)
+    moved = np.where(beyond_high, np.maximum(2.0 * high - moved, back), moved)
     return moved, np.where(beyond_low | beyond_high, -speed, speed)

@@ -62,25 +62,32 @@ def look(
 
 
 def arrived(before: Track, now: Track, goal: Track, arrival: Arrival) -> Any:
-    """Tell where the segment comes within both tolerances, at its point nearest to the goal. Shape (N,)."""
+    """Tell where the segment is within both tolerances at its point nearest to the goal or at its end. Shape (N,)."""
     dx, dy = now.x - before.x, now.y - before.y
     share = _nearest_share(before.x - goal.x, before.y - goal.y, dx, dy)
-    off_x, off_y = before.x + share * dx - goal.x, before.y + share * dy - goal.y
-    turned = wrap(now.yaw - before.yaw)
-    off_yaw = wrap(before.yaw + share * turned - goal.yaw)
+    nearest = Track(before.x + share * dx, before.y + share * dy, before.yaw + share * wrap(now.yaw - before.yaw))
+    return _within(nearest, goal, arrival) | _within(now, goal, arrival)
+
+
+def _within(pose: Track, goal: Track, arrival: Arrival) -> Any:
+    off_x, off_y = pose.x - goal.x, pose.y - goal.y
     near = off_x * off_x + off_y * off_y <= arrival.position * arrival.position
-    return near & (np.abs(off_yaw) <= arrival.heading)
+    return near & (np.abs(wrap(pose.yaw - goal.yaw)) <= arrival.heading)
 
 
 def _gap_to_carts(before: Track, now: Track, carts_before: Obstacles, carts: Obstacles) -> Any:
-    """Return the least distance from the robot's centre to a cart's edge along the segment (m), (N,)."""
+    """Return the least distance from the robot's centre to a cart's edge along the segment (m), (N,).
+
+    Discs of radius 0 are no carts (see ``carts.gather``); with no cart the distance is infinite.
+    """
     if carts.x.shape[0] == 0:
         return np.full(np.shape(now.x), np.inf)
     from_x, from_y = before.x - carts_before.x, before.y - carts_before.y
     dx, dy = now.x - carts.x - from_x, now.y - carts.y - from_y
     share = _nearest_share(from_x, from_y, dx, dy)
     off_x, off_y = from_x + share * dx, from_y + share * dy
-    return np.min(np.sqrt(off_x * off_x + off_y * off_y) - carts.radius, axis=0)
+    gap = np.sqrt(off_x * off_x + off_y * off_y) - carts.radius
+    return np.min(np.where(carts.radius > 0.0, gap, np.inf), axis=0)
 
 
 def _nearest_share(from_x: Any, from_y: Any, dx: Any, dy: Any) -> Any:

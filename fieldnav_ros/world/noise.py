@@ -1,7 +1,7 @@
 """What chance does to an episode, drawn in full before it starts from the layout's seed.
 
 A tape belongs to its layout alone, so an episode is the same in a batch of thousands, alone in a node,
-and when it is run again.
+under another time limit, and when it is run again.
 """
 
 from __future__ import annotations
@@ -42,9 +42,10 @@ def record(layouts: Sequence[Layout], plants: Sequence[Plant], steps: int) -> Ta
 
 
 def _one(seed: int, plant: Plant, steps: int) -> Tapes:
-    rng = np.random.default_rng(seed)
-    normal = rng.standard_normal((3, steps))
-    uniform = rng.random((2, steps))
+    # a generator each and one row a step, so that a longer tape starts as a shorter one does
+    for_poses, for_shares = (np.random.default_rng(part) for part in np.random.SeedSequence(seed).spawn(2))
+    normal = for_poses.standard_normal((steps, 3)).T
+    uniform = for_shares.random((steps, 2)).T
     return Tapes(
         plant.pose_noise * normal[0],
         plant.pose_noise * normal[1],
