@@ -18,6 +18,7 @@ from rclpy.task import Future
 from std_msgs.msg import String
 from std_srvs.srv import Trigger
 
+from fieldnav_ros import __version__
 from fieldnav_ros.errors import FieldnavError, InputError
 from fieldnav_ros.guide import MODELS
 from fieldnav_ros.model import Layout
@@ -36,7 +37,7 @@ from fieldnav_ros.nodes.script import LateError, Script, Wait
 from fieldnav_ros.nodes.service_link import RefusedError, ServiceLink
 from fieldnav_ros.parameters import DEFAULTS
 from fieldnav_ros.params_file import read_parameters, write_parameters
-from fieldnav_ros.tuning.events import Episode, Event, SessionConfig
+from fieldnav_ros.tuning.events import About, Episode, Event, SessionConfig
 from fieldnav_ros.tuning.ledger import Ledger
 from fieldnav_ros.tuning.session import Session
 from fieldnav_ros.world.layouts import draw
@@ -121,7 +122,8 @@ class TunerNode(FieldnavNode):
         self.session.apply(*self.ledger.events())
         if not self.session.begun:
             initial = read_parameters(self.settings["initial"]) if self.settings["initial"] else DEFAULTS
-            self.commit(self.session.begin(config, initial))
+            about = About(software=f"fieldnav_ros {__version__}", model=MODELS[0], yard=self.yard)
+            self.commit(self.session.begin(config, initial, about=about))
             return
         if self.session.config != config:
             name = next(key for key, value in config if value != getattr(self.session.config, key))

@@ -10,6 +10,7 @@ from fieldnav_ros.errors import InputError
 from fieldnav_ros.model import Frozen, Layout, Outcome, Positive
 from fieldnav_ros.parameters import ParameterSet
 from fieldnav_ros.tuning.space import Prior
+from fieldnav_ros.yard import Yard
 
 Phase = Literal["search", "verdict"]
 Role = Literal["candidate", "control", "champion", "challenger"]
@@ -68,6 +69,15 @@ class Episode(Frozen):
     time_limit: float
 
 
+class About(Frozen):
+    """What a reader of the record wants to know, and no decision depends on."""
+
+    software: Text = ""
+    model: Text = Field(default="", description="the field that guided, see ``guide.MODELS``")
+    yard: Yard | None = None
+    place: Text = Field(default="", description="simulation, or the site in the operator's words")
+
+
 class SessionBegun(Frozen):
     """First event of every ledger."""
 
@@ -76,6 +86,7 @@ class SessionBegun(Frozen):
     champion_id: str = "initial"
     champion: ParameterSet
     prior: Prior | None = None
+    about: About | None = None
 
 
 class BatchOpened(Frozen):

@@ -104,12 +104,19 @@ class Session:
         return InService(episodes[0].set_id, episodes[0].parameters) if episodes else self.champion
 
     def begin(
-        self, config: SessionConfig, champion: ParameterSet = DEFAULTS, prior: Prior | None = None
+        self,
+        config: SessionConfig,
+        champion: ParameterSet = DEFAULTS,
+        prior: Prior | None = None,
+        about: ev.About | None = None,
     ) -> list[Event]:
-        """Begin with ``champion`` in service and, where there is one, a prior from an earlier session."""
+        """Begin with ``champion`` in service and, where there is one, a prior from an earlier session.
+
+        ``about`` is for the record alone; no decision depends on it.
+        """
         if self.begun:
             raise WorkError("the session has begun already: go on with it or start a new ledger")
-        return self._followed([ev.SessionBegun(config=config, champion=champion, prior=prior)])
+        return self._followed([ev.SessionBegun(config=config, champion=champion, prior=prior, about=about)])
 
     def advance(self) -> list[Event]:
         """Return decisions that are due; none unless a crash parted an outcome from what follows from it."""
