@@ -188,3 +188,20 @@ def stack(sets: Sequence[ParameterSet], repeat: int = 1) -> Numbers:
     """Return the sets as nine arrays of ``len(sets) * repeat`` rows, each set ``repeat`` times in a row."""
     table = np.repeat(np.array([item.to_array() for item in sets]).T, repeat, axis=1)
     return Numbers(*table)
+
+
+def markdown_table() -> str:
+    """Return the table as the README shows it; ``python -m fieldnav_ros.parameters`` prints it."""
+    rows = [
+        "| ROS parameter | symbol | unit | default | range | what it does |",
+        "| --- | --- | --- | --- | --- | --- |",
+    ]
+    rows += [
+        f"| `{row.ros_name}` | {row.symbol} | {row.unit} | {row.default:g} | {row.low:g} to {row.high:g} | {row.meaning} |"
+        for row in TABLE
+    ]
+    return "\n".join(rows) + "\n"
+
+
+if __name__ == "__main__":
+    print(markdown_table(), end="")  # noqa: T201  (a program for people and for the README)
