@@ -42,7 +42,6 @@ EXTRAS["test"] = [
     *EXTRAS["pit"],
     "pytest>=8",
     "hypothesis",
-    "scipy",
     "jsonschema",
     "mcap",
     "mcap-ros2-support",
@@ -112,7 +111,7 @@ setup(
     maintainer_email="maintainers@fieldnav.example",
     license="Apache-2.0",
     python_requires=">=3.10",
-    install_requires=["numpy", "cma", "pydantic>=2", "PyYAML"],
+    install_requires=["numpy", "scipy", "cma", "pydantic>=2", "PyYAML"],
     extras_require=EXTRAS,
     # config/ lies beside the package in a checkout and inside it once installed: see fieldnav_ros/resources.py.
     packages=[*find_packages(include=[NAME, f"{NAME}.*"]), f"{NAME}.config"],
