@@ -102,7 +102,8 @@ def test_names_left_out_keep_their_defaults_and_whole_numbers_are_numbers() -> N
 def outside(row: Parameter) -> list[Any]:
     """Return what no parameter may be, and the nearest values beyond its bounds."""
     below, above = math.nextafter(row.low, -math.inf), math.nextafter(row.high, math.inf)
-    return [math.nan, math.inf, -math.inf, True, np.True_, "0.1", None, [0.1], 1 + 0j, Decimal("1"), 16**5000, below, above]
+    no_numbers = [math.nan, math.inf, -math.inf, True, np.True_, "0.1", None, [0.1], 1 + 0j, Decimal("1")]
+    return [*no_numbers, 16**5000, below, above]
 
 
 @EACH
@@ -123,7 +124,7 @@ def test_what_is_no_number_in_range_is_refused_with_name_value_and_bound(row: Pa
 def test_direct_construction_is_as_strict(row: Parameter) -> None:
     for bad in (math.nan, True, "0.1", math.nextafter(row.low, -math.inf), math.nextafter(row.high, math.inf)):
         with pytest.raises(ValidationError, match=row.name):
-            ParameterSet(**{row.name: bad})
+            ParameterSet.model_validate({row.name: bad})
     for edge in (row.low, row.high):
         assert getattr(ParameterSet.from_ros({row.ros_name: edge}), row.name) == edge
 

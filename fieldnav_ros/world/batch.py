@@ -75,7 +75,8 @@ def simulate(
     code, time, clearance = np.empty(len(column), dtype=int), np.empty(len(column)), np.empty(len(column))
     steps = 0
     most = max(1, min(CHUNK, TAPE_CELLS // max(1, round(limit / STEP))))
-    for rows in _chunks(np.array([plant.pose_rate for plant in per_layout])[column], most):
+    alike = [(plant.pose_rate, bool(layout.obstacles)) for plant, layout in zip(per_layout, layouts)]
+    for rows in _chunks(np.array(alike)[column], most):
         run = _Run(
             yard, [layouts[i] for i in column[rows]], [per_layout[i] for i in column[rows]],
             Numbers(*(part[rows] for part in numbers)), model, limit,
@@ -96,10 +97,14 @@ def _check(layouts: int, sets: int, plants: int, limit: float) -> None:
         raise InputError.of("time limit", limit, f"> 0 and at most {LONGEST:g} s")
 
 
-def _chunks(pose_rate: FloatArray, most: int) -> Iterator[np.ndarray]:
-    """Yield the indices of rows that are stepped together: ``most`` at a time, of one pose rate."""
-    for rate in np.unique(pose_rate):
-        rows = np.flatnonzero(pose_rate == rate)
+def _chunks(alike: np.ndarray, most: int) -> Iterator[np.ndarray]:
+    """Yield the indices of rows that are stepped together: ``most`` at a time, ``alike`` (rows, keys) the same.
+
+    Rows without carts keep to themselves: they are spared the arithmetic for carts, and bits of their results
+    do not hang on whether a neighbour needs it.
+    """
+    for kind in np.unique(alike, axis=0):
+        rows = np.flatnonzero((alike == kind).all(axis=1))
         for first in range(0, len(rows), most):
             yield rows[first : first + most]
 

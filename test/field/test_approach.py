@@ -37,7 +37,7 @@ def about(side: int, rho: float, theta: float, radius: float) -> tuple[float, fl
 @FEW
 @given(side=SIDE, theta=TURN, radius=RADIUS, softness=SOFTNESS)
 def test_on_the_circle_the_spiral_is_its_tangent(side: int, theta: float, radius: float, softness: float) -> None:
-    """rho = d_e gives theta + pi/2 (anticlockwise) and theta - pi/2 (clockwise)."""
+    """At rho = d_e it is theta + pi/2 (anticlockwise) and theta - pi/2 (clockwise)."""
     got = spiral_vector(*about(side, radius, theta, radius), side, radius, softness)
     assert got == pytest.approx(direction(theta + side * math.pi / 2), abs=1e-6)
 
@@ -45,7 +45,7 @@ def test_on_the_circle_the_spiral_is_its_tangent(side: int, theta: float, radius
 @FEW
 @given(side=SIDE, theta=TURN, radius=RADIUS, softness=SOFTNESS)
 def test_far_away_the_spiral_points_at_the_centre(side: int, theta: float, radius: float, softness: float) -> None:
-    """rho -> infinity gives theta +- pi, from the side of +-pi/2, with the gap (pi/2)(d_e + K_r)/(rho + K_r)."""
+    """For rho -> infinity it is theta +- pi, from the side of +-pi/2, with the gap (pi/2)(d_e + K_r)/(rho + K_r)."""
     rho = 1e5
     gap = math.pi / 2 * (radius + softness) / (rho + softness)
     got = spiral_vector(*about(side, rho, theta, radius), side, radius, softness)
@@ -56,7 +56,7 @@ def test_far_away_the_spiral_points_at_the_centre(side: int, theta: float, radiu
 @FEW
 @given(side=SIDE, theta=TURN, radius=RADIUS, softness=SOFTNESS)
 def test_at_the_centre_the_spiral_points_outwards(side: int, theta: float, radius: float, softness: float) -> None:
-    """rho = 0 gives theta; met in the limit, since theta has no value at the centre itself."""
+    """At rho = 0 it is theta; met in the limit, since theta has no value at the centre itself."""
     got = spiral_vector(*about(side, 1e-10, theta, radius), side, radius, softness)
     assert got == pytest.approx(direction(theta), abs=1e-3)
     assert spiral_vector(0.0, side * radius, side, radius, softness) == pytest.approx((1.0, 0.0))
@@ -65,7 +65,7 @@ def test_at_the_centre_the_spiral_points_outwards(side: int, theta: float, radiu
 @FEW
 @given(side=SIDE, theta=TURN, radius=RADIUS, softness=SOFTNESS)
 def test_half_way_in_and_twice_as_far_out(side: int, theta: float, radius: float, softness: float) -> None:
-    """rho = d_e/4 gives theta +- pi/4; K_r = d_e at rho = 3 d_e gives theta +- 3 pi/4 (by hand from the formulas)."""
+    """At rho = d_e/4 theta +- pi/4; with K_r = d_e at rho = 3 d_e theta +- 3 pi/4 (by hand from the formulas)."""
     inside = spiral_vector(*about(side, radius / 4, theta, radius), side, radius, softness)
     assert inside == pytest.approx(direction(theta + side * math.pi / 4), abs=1e-9)
     outside = spiral_vector(*about(side, 3 * radius, theta, radius), side, radius, radius)
@@ -153,7 +153,7 @@ def test_paths_along_the_field_reach_the_goal_in_its_heading(start: tuple[float,
     path = solve_ivp(velocity, (0.0, 6.0), start, events=crossing, max_step=0.01, rtol=1e-6)
     assert path.status == 1
     assert path.y[:, -1] == pytest.approx((0.0, 0.0), abs=0.03)
-    assert float(approach_heading(*path.y[:, -1], 0.15, 0.1)) == pytest.approx(0.0, abs=0.2)
+    assert float(approach_heading(path.y[0, -1], path.y[1, -1], 0.15, 0.1)) == pytest.approx(0.0, abs=0.2)
 
 
 def test_arrays_broadcast_and_agree_with_single_points() -> None:
