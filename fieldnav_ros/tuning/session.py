@@ -296,7 +296,7 @@ class Session:
         state, result = self.state, list(events)
         for event in events:
             state = fold(state, event)
-        while self._draw is not None:
+        while self._draw is not None and state.config is not None:
             decision = Decider(self._search_at(state), self._draw).next(state)
             if decision is None:
                 break

@@ -8,8 +8,12 @@ average of such wealths over f under weights chosen beforehand (the mixture of C
 Mathematical Finance 1(1), 1991). Ville's inequality: the chance that it ever reaches 1 / alpha is at most alpha.
 So the test may be looked at after every pair, and stopped for whatever reason.
 
-The average over a fixed grid of stakes is used, and not one predictable stake learnt from the pairs so far
-(aGRAPA in the paper): at 10 to 40 pairs it has more power on differences like ours, and nothing to tune.
+The average over a fixed grid of stakes is used, with most weight on large ones, and not one stake learnt from the
+pairs so far (aGRAPA in the paper). Costs run from 1.2 to 4 s with failures at 12 and 20 s, so the best stake is
+large; measured on such differences, accepted within 20 pairs: 0.56 against aGRAPA's 0.45 where a mean of 7.3 s falls
+to 2.6 s, 0.78 against 0.69 from 11 s to 4.7 s. There is a floor that no test gets under: a failure of the challenger
+in one pair of twenty costs 1 s, and n pairs without one do not rule out a share of 3 / n (the rule of three). A
+gain of tenths of a second therefore takes hundreds of pairs.
 """
 
 from __future__ import annotations
@@ -23,7 +27,7 @@ from fieldnav_ros.errors import InputError
 from fieldnav_ros.parameters import FloatArray
 
 STAKES: FloatArray = np.linspace(0.05, 0.95, 19)  # shares of the wealth that a difference of -B would lose
-LOG_WEIGHTS: FloatArray = np.log(STAKES / STAKES.sum())
+LOG_WEIGHTS: FloatArray = np.log(STAKES**8 / (STAKES**8).sum())
 
 
 @dataclass(frozen=True)
