@@ -64,30 +64,40 @@ class Script:
 
     def _resume(self, steps: Steps, value: Any, error: Exception | None) -> None:
         self._future, self._deadline = None, None
+        while (wait := self._next_wait(steps, value, error)) is not None:
+            if not wait.future.done():
+                self._future = wait.future
+                self._deadline = None if wait.seconds is None else time.monotonic() + wait.seconds
+                wait.future.add_done_callback(self._on_done)
+                return
+            value, error = _ending(wait.future)
+
+    def _next_wait(self, steps: Steps, value: Any, error: Exception | None) -> Wait | None:
+        """Run the steps up to their next wait; None where they ended, failed or were replaced."""
+        wait = None
         outer, self._inside = self._inside, True
         try:
             wait = steps.send(value) if error is None else steps.throw(error)
         except StopIteration:
-            wait = None
+            pass
         except Exception as fault:  # noqa: BLE001  (whatever it is, the owner decides what a fault in its steps means)
-            wait = None
             self._on_fault(fault)
         finally:
             self._inside = outer
         if self._steps is not steps:  # the steps themselves started others
-            return
+            return None
         if wait is None:
             self._steps = None
-            return
-        self._future = wait.future
-        self._deadline = None if wait.seconds is None else time.monotonic() + wait.seconds
-        wait.future.add_done_callback(self._on_done)
+        return wait
 
     def _on_done(self, future: Future) -> None:
-        if self._steps is None or future is not self._future:
-            return
-        failure = future.exception()
-        if failure is None:
-            self._resume(self._steps, future.result(), None)
-        else:
-            self._resume(self._steps, None, failure if isinstance(failure, Exception) else RuntimeError(str(failure)))
+        if self._steps is not None and future is self._future:
+            self._resume(self._steps, *_ending(future))
+
+
+def _ending(future: Future) -> tuple[Any, Exception | None]:
+    """Return a future's result, or what it failed with."""
+    failure = future.exception()
+    if failure is None:
+        return future.result(), None
+    return None, failure if isinstance(failure, Exception) else RuntimeError(str(failure))
