@@ -1,7 +1,7 @@
 """What follows from a session's state: at most one event at a time, a function of the state and the seed alone.
 
 The order of things: search, generation by generation, until only the verdict's share of the floor time is left;
-then the search's mean is named challenger and meets the champion in pairs on layouts of their own; the verdict;
+then the search's favourite is named challenger and meets the champion in pairs on layouts of their own; the verdict;
 and another round where enough floor time is left.
 """
 
@@ -73,7 +73,7 @@ class Decider:
 
     def _challenger(self, state: State) -> ev.ChallengerNamed | None:
         if len(state.generations) > state.generations_before:
-            parameters = SPACE.from_unit(self.search.mean)
+            parameters = SPACE.from_unit(self.search.favourite)
         elif state.prior is not None and not state.rounds:
             parameters = state.prior.parameters()
         else:

@@ -28,7 +28,7 @@ class SessionConfig(Frozen):
     time_limit: Positive = Field(default=10.0, description="time allowed for an episode; scales the costs of failures")
     population: int | None = Field(default=None, ge=4, le=1000, description="sets per generation; none: the engine's")
     layouts: int = Field(default=4, ge=1, le=1000, description="layouts per generation, the same for all its sets")
-    sigma: float = Field(default=0.25, gt=0, le=1, description="first step size in the unit cube, without a prior")
+    sigma: float = Field(default=0.15, gt=0, le=1, description="first step size in the unit cube, without a prior")
     control: bool = Field(default=True, description="run the champion in every block of the search, to see drift")
     alpha: float = Field(default=0.05, gt=0, lt=1, description="bound on false acceptance over the whole session")
     rounds: int = Field(default=2, ge=1, le=16, description="most verdicts in a session; alpha is shared among them")

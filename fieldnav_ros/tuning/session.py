@@ -174,7 +174,7 @@ class Session:
     def prior(self, learnt_from: str = "") -> Prior:
         """Return what the search has learnt so far, for a later session."""
         search = self._search_at(self.state)
-        return Prior.of(search.mean, search.covariance, learnt_from, self.state.times.episodes)
+        return Prior.of(search.favourite, search.covariance, learnt_from, self.state.times.episodes)
 
     def summary(self) -> dict[str, str | float | int | None]:
         """Return plain numbers for a status line; times and costs in s."""

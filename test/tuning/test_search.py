@@ -91,3 +91,18 @@ def test_what_it_learnt_makes_a_prior_from_which_it_goes_on_faster() -> None:
     cold = Search(START, 0.25, (2,))
     best_warm, best_cold = (min(told(search, 3)[-1].costs) for search in (warm, cold))
     assert best_warm < 0.1 * best_cold
+
+
+def test_under_noise_the_favourite_lies_nearer_the_best_point_than_the_last_mean() -> None:
+    # what averaging iterates is for: Polyak and Juditsky, 1992
+    favourite, last = [], []
+    for seed in range(12):
+        search, noise = Search(BEST, 0.15, (seed,)), np.random.default_rng(seed)
+        for _ in range(16):
+            points = search.ask()
+            costs = tuple(float(((point - BEST) ** 2).sum() + noise.normal(0.0, 0.5)) for point in points)
+            search.tell(Generation(tuple(tuple(float(u) for u in point) for point in points), costs))
+        favourite.append(((search.favourite - BEST) ** 2).sum())
+        last.append(((search.mean - BEST) ** 2).sum())
+    assert np.mean(favourite) < np.mean(last)
+    assert np.array_equal(Search(START, 0.15, (1,)).favourite, START)
