@@ -248,7 +248,7 @@ def _named(state: State, event: ev.ChallengerNamed) -> State:
     )
 
 
-FUTILE = 0.1  # a challenger is dropped early once it is shown, at this level, to be worse; costs no validity
+FUTILE = 0.05  # a challenger is dropped early once it is shown, at this level, to be worse; costs no validity
 
 
 def _compared(state: State, event: ev.PairCompared) -> State:
