@@ -5,6 +5,8 @@ from __future__ import annotations
 import ast
 import inspect
 import math
+import subprocess
+import sys
 from collections.abc import Callable
 
 import numpy as np
@@ -227,3 +229,12 @@ def test_the_verdict_stands_alone() -> None:
         if isinstance(node, ast.ImportFrom) and node.module and node.module.startswith("fieldnav_ros")
     }
     assert ours <= {"fieldnav_ros.errors", "fieldnav_ros.parameters"}
+
+
+def test_importing_the_verdict_does_not_load_the_search_engine() -> None:
+    program = (
+        "import sys, fieldnav_ros.tuning.verdict; loaded = 'cma' in sys.modules; "
+        "from fieldnav_ros.tuning import Session; print(loaded, 'cma' in sys.modules, Session.__name__)"
+    )
+    done = subprocess.run([sys.executable, "-c", program], capture_output=True, text=True, timeout=60, check=True)
+    assert done.stdout.split() == ["False", "True", "Session"]
