@@ -9,9 +9,10 @@ import pytest
 
 pytest.importorskip("rclpy", reason="futures are rclpy's")
 
+from rclpy.task import Future
+
 from fieldnav_ros.nodes import script as module
 from fieldnav_ros.nodes.script import LateError, Script, Wait
-from rclpy.task import Future
 
 pytestmark = pytest.mark.ros
 Steps = Generator[Wait, Any, None]
