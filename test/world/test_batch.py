@@ -8,7 +8,7 @@ from typing import Any
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import Phase, given, settings
 from hypothesis import strategies as st
 
 from fieldnav_ros.errors import InputError
@@ -33,7 +33,9 @@ PLANTS = st.builds(
     slip=st.sampled_from([0.0, 0.2]), pose_noise=st.sampled_from([0.0, 0.005]), yaw_noise=st.sampled_from([0.0, 0.02]),
     pose_loss=st.sampled_from([0.0, 0.3]), pose_rate=st.sampled_from([20.0, 30.0, 50.0, 100.0]),
 )  # fmt: skip
-FEW = settings(deadline=None, max_examples=6)
+FEW = settings(
+    deadline=None, max_examples=6, phases=[Phase.explicit, Phase.reuse, Phase.generate]
+)  # shrinking would take minutes
 
 
 def mixed(seed: int) -> list[Layout]:
@@ -160,6 +162,8 @@ def test_outcomes_and_their_times_follow_from_the_motion(monkeypatch: pytest.Mon
     assert (kind, time) == (OutcomeKind.CONTACT, pytest.approx(when(2.2 - 0.06), abs=1.1 * STEP))
     kind, time, gap = run(open_yard, 10.0)
     assert (kind, time, gap) == (OutcomeKind.OFF_FLOOR, pytest.approx(when(2.2), abs=1.1 * STEP), None)
+    passed = run(open_yard, 1.5, Obstacle(x=1.0, y=1.0, radius=0.06))
+    assert passed == (OutcomeKind.TIMEOUT, pytest.approx(1.5), pytest.approx(0.2 - 0.12))  # least gap, not the last
     kind, time, gap = run(open_yard, 0.5, cart)
     assert (kind, time) == (OutcomeKind.TIMEOUT, pytest.approx(0.5))
     assert gap == pytest.approx(1.0 - 0.12 - 1.2 * (0.5 - 0.15), abs=1e-6)
