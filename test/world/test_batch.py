@@ -19,6 +19,7 @@ from fieldnav_ros.resources import config_path
 from fieldnav_ros.world import batch
 from fieldnav_ros.world.batch import BatchResult, simulate
 from fieldnav_ros.world.layouts import draw_many
+from fieldnav_ros.world.noise import record
 from fieldnav_ros.world.plant import STEP
 from fieldnav_ros.yard import Plant, Yard, load_yard
 
@@ -167,6 +168,18 @@ def test_outcomes_and_their_times_follow_from_the_motion(monkeypatch: pytest.Mon
     kind, time, gap = run(open_yard, 0.5, cart)
     assert (kind, time) == (OutcomeKind.TIMEOUT, pytest.approx(0.5))
     assert gap == pytest.approx(1.0 - 0.12 - 1.2 * (0.5 - 0.15), abs=1e-6)
+
+
+@pytest.mark.parametrize("seed", [1, 2, 3])
+def test_a_lost_pose_leaves_the_command_as_it_was(monkeypatch: pytest.MonkeyPatch, seed: int) -> None:
+    """Nothing moves before the first pose that comes through; from there on the closed form as above."""
+    monkeypatch.setattr(batch, "guide", full_speed)
+    layout = Layout(start=Pose(x=0.2, y=0.8, yaw=0.0), goal=Pose(x=2.0, y=0.8, yaw=0.0), seed=seed)
+    plant = Plant(pose_loss=0.9, pose_rate=100.0)
+    first = int(np.argmin(record([layout], [plant], 500).lost[:, 0])) * STEP
+    assert first > 0
+    bound = first + (1.8 - 0.03) / 1.2 + 1.2 / (2 * 4.0)
+    assert bound <= simulate(YARD, "empty", [layout], [DEFAULTS], [plant]).time.item() <= bound + STEP + 1e-9
 
 
 @pytest.mark.parametrize(("rate", "expected"), [(100.0, 100), (50.0, 50), (20.0, 20), (30.0, 30), (70.0, 70)])
