@@ -117,7 +117,7 @@ setup(
     packages=[*find_packages(include=[NAME, f"{NAME}.*"]), f"{NAME}.config"],
     package_dir={f"{NAME}.config": "config"},
     package_data={
-        NAME: ["py.typed"],
+        NAME: ["py.typed", "report/template/*"],
         f"{NAME}.config": [path.relative_to("config").as_posix() for path in config_files()],
     },
     data_files=shared_files(),

@@ -12,6 +12,7 @@ from typing import Any
 
 from fieldnav_ros import __version__
 from fieldnav_ros.errors import FieldnavError, InputError
+from fieldnav_ros.report import command as report
 
 SAFETY = (
     "Robots can hurt: clear the floor, keep the hardware stop in hand. This software is no safety system; "
@@ -43,6 +44,12 @@ def _demo(arguments: argparse.Namespace) -> Summary:
     return run_demo(arguments.out, arguments.floor_time, arguments.seed)
 
 
+def _report(arguments: argparse.Namespace) -> Summary:
+    summary = report.run(arguments)
+    print(summary["page"])
+    return summary
+
+
 def build_parser() -> argparse.ArgumentParser:
     """Return the parser of all verbs."""
     parser = _Parser(prog="fieldnav", description="Retune a robot's heading-field guidance.", epilog=SAFETY)
@@ -57,6 +64,7 @@ def build_parser() -> argparse.ArgumentParser:
     demo.add_argument(
         "--seed", type=number("--seed", 0, 2**31, int), default=1, help="seed of the session (default: %(default)s)"
     )
+    report.add_arguments(_verb(verbs, "report", _report, "one page with pictures from a session's ledger"))
     return parser
 
 
