@@ -93,12 +93,18 @@ writable_home() {
     fi
 }
 
-# Installing writes into the folder installed from, so that a clone that cannot be written to is copied first.
+# Installing writes into the folder installed from, so that a clone that cannot be written to is copied first, and
+# again only where it has changed: somebody may be running from the copy.
 copy_sources() {
-    rm -rf "$2"
-    mkdir -p "$2"
-    tar -C "$1" --mode=u+w --exclude=./.git --exclude='./.venv*' --exclude=./build --exclude=./install \
-        --exclude=./log -cf - . | tar -C "$2" -xf - || fail "cannot copy $1 to $2"
+    local pack=(tar -C "$1" --sort=name --mode=u+w --exclude=./.git --exclude='./.venv*' --exclude=./build
+        --exclude=./install --exclude=./log -cf - .) digest
+    digest=$("${pack[@]}" | sha256sum)
+    if [ "$digest" != "$(cat "$2.digest" 2>/dev/null)" ]; then
+        rm -rf "$2"
+        mkdir -p "$2"
+        "${pack[@]}" | tar -C "$2" -xf - || fail "cannot copy $1 to $2"
+        printf '%s\n' "$digest" >"$2.digest"
+    fi
 }
 
 # Prints a line that changes with everything that decides what an environment holds.
@@ -130,24 +136,35 @@ make_environment() {
     show_progress "$log" "${pip[@]}" || fail "$(explain "$log")"
 }
 
-# show_progress LOG COMMAND...: runs the command with its output in LOG, and a line that tells how long it has taken.
+# show_progress LOG COMMAND...: runs the command with its output in LOG and, at a terminal, the seconds it has taken.
 show_progress() {
-    local log=$1 pid seconds=0 result=0
+    local log=$1 ticker='' result=0
     shift
     say "installing into ${log%/*} (once, about a minute)"
-    "$@" >"$log" 2>&1 &
-    pid=$!
-    trap 'kill "$pid" 2>/dev/null; exit 130' INT TERM
-    while kill -0 "$pid" 2>/dev/null; do
-        if [ -t 2 ]; then printf '\r%3d s ' "$seconds" >&2; fi
-        sleep 1
-        seconds=$((seconds + 1))
-    done
-    wait "$pid" || result=$?
-    trap - INT TERM
-    if [ -t 2 ]; then printf '\r       \r' >&2; fi
-    [ "$result" -ne 0 ] || say "installed in $seconds s"
+    SECONDS=0
+    # The command itself stays in the foreground: an interrupt reaches it and all that it has started.
+    trap 'exit 130' INT
+    if [ -t 2 ]; then
+        tick $$ &
+        ticker=$!
+    fi
+    "$@" >"$log" 2>&1 || result=$?
+    if [ -n "$ticker" ]; then
+        kill "$ticker" 2>/dev/null || true
+        wait "$ticker" 2>/dev/null || true
+        printf '\r       \r' >&2
+    fi
+    trap - INT
+    [ "$result" -ne 0 ] || say "installed in $SECONDS s"
     return "$result"
+}
+
+# tick PROCESS: counts seconds on one line for as long as the process is there.
+tick() {
+    while kill -0 "$1" 2>/dev/null; do
+        printf '\r%4d s ' "$SECONDS" >&2
+        sleep 1
+    done
 }
 
 # Prints in one sentence why pip failed.
