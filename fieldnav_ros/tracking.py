@@ -39,12 +39,10 @@ class Rules(Frozen):
 
 
 class Tracks(NamedTuple):
-    """Obstacles followed, each field (M,): place (m), velocity (m/s), when last seen (s), sightings so far."""
+    """Obstacles followed: place (m) and velocity (m/s), each (2, M); when last seen (s) and how often, each (M,)."""
 
-    x: FloatArray
-    y: FloatArray
-    vx: FloatArray
-    vy: FloatArray
+    place: FloatArray
+    velocity: FloatArray
     seen: FloatArray
     sightings: NDArray[np.int64]
     stamp: float
@@ -53,83 +51,84 @@ class Tracks(NamedTuple):
     @classmethod
     def none(cls) -> Tracks:
         """Return the state before anything was seen."""
-        empty = np.zeros(0)
-        return cls(empty, empty, empty, empty, empty, np.zeros(0, dtype=np.int64), -np.inf)
+        return cls(np.zeros((2, 0)), np.zeros((2, 0)), np.zeros(0), np.zeros(0, dtype=np.int64), -np.inf)
 
     def take(self, rows: Any) -> Tracks:
         """Return the tracks that an index or mask picks."""
-        parts = zip(self._fields[:6], self[:6])
-        return self._replace(**{name: part[rows] for name, part in parts})
+        return Tracks(self.place[:, rows], self.velocity[:, rows], self.seen[rows], self.sightings[rows], self.stamp)
 
-    def at(self, stamp: float) -> Tracks:
-        """Return the tracks moved on at their velocities to another moment (s)."""
-        ahead = stamp - self.seen
-        return self._replace(x=self.x + self.vx * ahead, y=self.y + self.vy * ahead)
+    def places_at(self, stamp: float) -> FloatArray:
+        """Return the places (2, M) moved on at the tracks' velocities to another moment (s)."""
+        return self.place + self.velocity * (stamp - self.seen)
 
 
-def follow(tracks: Tracks, stamp: float, x: FloatArray, y: FloatArray, rules: Rules) -> Tracks:
-    """Return the tracks after a sighting of obstacles at x, y (m; (K,)) at the moment ``stamp`` (s).
+def follow(tracks: Tracks, stamp: float, places: FloatArray, rules: Rules) -> Tracks:
+    """Return the tracks after a sighting of obstacles at ``places`` (m; (2, K)) at the moment ``stamp`` (s).
 
     The result holds the sighted obstacles first, in the order given, then those out of sight for no longer than
-    ``rules.patience``, still at the place where they were last seen (``at`` moves them on). A new obstacle has no
-    velocity until its second sighting. A sighting from before the newest one changes nothing, unless it is older
-    by more than the patience: then the clock was set back and everything starts anew.
+    ``rules.patience``, still at the place where they were last seen (``places_at`` moves them on). A new obstacle
+    has no velocity until its second sighting. A sighting from before the newest one changes nothing, unless it is
+    older by more than the patience: then the clock was set back and everything starts anew.
     """
     if stamp < tracks.stamp - rules.patience:
         tracks = Tracks.none()
     if stamp < tracks.stamp:
         return tracks
     kept = tracks.seen >= stamp - rules.patience
-    old = tracks.take(kept)
-    of_track, of_place = _pair(old, stamp, x, y, rules)
-    count = len(x)
-    vx, vy, sightings = np.zeros(count), np.zeros(count), np.ones(count, dtype=np.int64)
-    seen, new_x, new_y = np.full(count, stamp), np.array(x, dtype=float), np.array(y, dtype=float)
-    if len(of_track):
-        put = of_place
-        new_x[put], new_y[put], vx[put], vy[put], seen[put], sightings[put] = _filtered(
-            old.take(of_track),
-            stamp, new_x[put], new_y[put], rules,
-        )  # fmt: skip
-    lost = np.ones(len(old.x), dtype=bool)
+    old = tracks if kept.all() else tracks.take(kept)
+    count = places.shape[1]
+    new = Tracks(
+        np.array(places, dtype=float),
+        np.zeros((2, count)),
+        np.full(count, stamp),
+        np.ones(count, dtype=np.int64),
+        stamp,
+    )
+    if count == 0 or old.seen.size == 0:
+        of_track = np.zeros(0, dtype=np.int64)
+    else:
+        of_track, of_place = _pair(old, stamp, places, rules)
+        _filter(old.take(of_track), new, of_place, rules)
+    if of_track.size == old.seen.size:
+        return new
+    lost = np.ones(old.seen.size, dtype=bool)
     lost[of_track] = False
-    return Tracks(
-        np.concatenate([new_x, old.x[lost]]), np.concatenate([new_y, old.y[lost]]),
-        np.concatenate([vx, old.vx[lost]]), np.concatenate([vy, old.vy[lost]]),
-        np.concatenate([seen, old.seen[lost]]), np.concatenate([sightings, old.sightings[lost]]), stamp,
-    )  # fmt: skip
+    gone = old.take(lost)
+    return Tracks._make([*(np.concatenate(pair, axis=-1) for pair in zip(new[:4], gone[:4])), stamp])
 
 
-def _pair(
-    old: Tracks, stamp: float, x: FloatArray, y: FloatArray, rules: Rules
-) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+def _pair(old: Tracks, stamp: float, places: FloatArray, rules: Rules) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
     """Return index arrays of tracks and sightings that belong together."""
-    ahead = old.at(stamp)
-    cost = (ahead.x[:, None] - x) ** 2 + (ahead.y[:, None] - y) ** 2
-    moved = np.hypot(old.x[:, None] - x, old.y[:, None] - y)
+    cost = _squared_distances(old.places_at(stamp), places)
     reach = rules.fastest * (stamp - old.seen) + rules.slack
-    possible = moved <= reach[:, None]
+    possible = _squared_distances(old.place, places) <= (reach * reach)[:, None]
     of_track, of_place = linear_sum_assignment(np.where(possible, cost, _RULED_OUT))
     good = possible[of_track, of_place]
     return of_track[good], of_place[good]
 
 
-def _filtered(
-    old: Tracks, stamp: float, x: FloatArray, y: FloatArray, rules: Rules
-) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray, FloatArray, NDArray[np.int64]]:
-    """Return x, y, vx, vy, time seen and number of sightings of tracks that were seen again."""
+def _squared_distances(first: FloatArray, second: FloatArray) -> FloatArray:
+    """Return squared distances (m^2) between places (2, M) and (2, K), shape (M, K)."""
+    apart = first[:, :, None] - second[:, None, :]
+    squared: FloatArray = np.add.reduce(apart * apart, axis=0)
+    return squared
+
+
+def _filter(old: Tracks, new: Tracks, put: NDArray[np.int64], rules: Rules) -> None:
+    """Fill in place, velocity, time and sightings of ``new`` at ``put`` from the tracks ``old`` seen again."""
+    stamp = new.stamp
     dt = stamp - old.seen
     timed = dt >= SAME_MOMENT
-    # two sightings give the first velocity as it is; the filter's start is exact for uniform motion
+    # two sightings give the first velocity as it is: the filter's start is exact for uniform motion
     first = old.sightings == 1
-    alpha = np.where(first, 1.0, rules.alpha)
-    rate = np.where(timed, np.where(first, 1.0, rules.beta) / np.where(timed, dt, 1.0), 0.0)
-    ahead = old.at(stamp)
-    miss_x, miss_y = x - ahead.x, y - ahead.y
-    vx, vy = old.vx + rate * miss_x, old.vy + rate * miss_y
-    scale = rules.fastest / np.maximum(np.hypot(vx, vy), rules.fastest)
-    # the moment of an untimed sighting stays the old one, or velocity would come from no time at all later on
-    return (
-        np.where(timed, ahead.x + alpha * miss_x, old.x), np.where(timed, ahead.y + alpha * miss_y, old.y),
-        vx * scale, vy * scale, np.where(timed, stamp, old.seen), old.sightings + timed,
-    )  # fmt: skip
+    alpha = np.where(timed, np.where(first, 1.0, rules.alpha), 0.0)
+    beta = np.where(timed, np.where(first, 1.0, rules.beta) / np.maximum(dt, SAME_MOMENT), 0.0)
+    # an untimed sighting leaves a track as it was, its moment too, or velocity would come from no time at all
+    ahead = old.place + old.velocity * np.where(timed, dt, 0.0)
+    miss = new.place[:, put] - ahead
+    velocity = old.velocity + beta * miss
+    speed = np.sqrt(np.add.reduce(velocity * velocity, axis=0))
+    new.place[:, put] = ahead + alpha * miss
+    new.velocity[:, put] = velocity * (rules.fastest / np.maximum(speed, rules.fastest))
+    new.seen[put] = np.where(timed, stamp, old.seen)
+    new.sightings[put] = old.sightings + timed

@@ -7,7 +7,7 @@ import sys
 import time
 import traceback
 from collections import Counter
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from pathlib import Path
 from types import FrameType
 from typing import Any, TypeVar
@@ -15,7 +15,6 @@ from typing import Any, TypeVar
 import rclpy
 from diagnostic_msgs.msg import DiagnosticArray, DiagnosticStatus, KeyValue
 from rclpy.context import Context
-from rclpy.executors import SingleThreadedExecutor
 from rclpy.node import Node
 from rclpy.parameter import Parameter
 from rclpy.qos import DurabilityPolicy, QoSProfile, ReliabilityPolicy, qos_profile_sensor_data
@@ -32,6 +31,8 @@ RELIABLE = QoSProfile(depth=10, reliability=ReliabilityPolicy.RELIABLE)
 LATCHED = QoSProfile(
     depth=1, reliability=ReliabilityPolicy.RELIABLE, durability=DurabilityPolicy.TRANSIENT_LOCAL
 )  # fmt: skip
+DEEP = QoSProfile(depth=2000, reliability=ReliabilityPolicy.RELIABLE)
+"""For lockstep: simulator and guidance do not wait for the judge, whose queue must hold what it has not yet seen."""
 SENSOR = qos_profile_sensor_data
 QUIET_TIME = 5.0
 """Seconds for which the same warning is not logged again."""
@@ -116,13 +117,25 @@ class FieldnavNode(Node):
         self._diagnostics.publish(message)
 
 
+def incoming_qos(settings: Mapping[str, Any]) -> QoSProfile:
+    """Return the QoS of pose and obstacles as ``match_stamps`` and ``reliable`` ask for it."""
+    if settings["match_stamps"]:
+        return DEEP
+    return RELIABLE if settings["reliable"] else SENSOR
+
+
 def yard_of(path: str) -> Yard:
     """Load the yard that the parameter ``yard`` names."""
     return load_yard(Path(path) if path else config_path("yards/parcel_yard.yaml"))
 
 
-def run(name: str, make: Callable[[Context], FieldnavNode], args: Sequence[str] | None = None) -> int:
+def run(
+    name: str, make: Callable[[Context], FieldnavNode], args: Sequence[str] | None = None, events: bool = False
+) -> int:
     """Run one node until SIGINT or SIGTERM; return the exit code (0, 1 the node failed, 2 bad input).
+
+    ``events`` takes rclpy's executor that is woken by events where there is one: it costs half as much, but is no
+    match for coroutines and callbacks that ask for message infos.
 
     rclpy's own signal handlers would take the context away before a last message can leave: so ours only set a flag.
     """
@@ -135,7 +148,7 @@ def run(name: str, make: Callable[[Context], FieldnavNode], args: Sequence[str] 
 
     before = {number: signal.signal(number, on_signal) for number in (signal.SIGINT, signal.SIGTERM)}
     try:
-        return _run(name, make, words, context, stop)
+        return _run(make, words, context, stop, events)
     except FieldnavError as error:
         print(f"{name}: {error}", file=sys.stderr)
         return error.exit_code
@@ -146,7 +159,7 @@ def run(name: str, make: Callable[[Context], FieldnavNode], args: Sequence[str] 
 
 
 def _run(
-    name: str, make: Callable[[Context], FieldnavNode], words: list[str], context: Context, stop: list[int]
+    make: Callable[[Context], FieldnavNode], words: list[str], context: Context, stop: list[int], events: bool
 ) -> int:
     try:
         rest = remove_ros_args(words)[1:]
@@ -156,7 +169,7 @@ def _run(
     if rest:
         raise InputError(f"{rest[0]!r} is not a known argument; parameters come after --ros-args as -p NAME:=VALUE")
     node = make(context)
-    executor = SingleThreadedExecutor(context=context)
+    executor = _executor(context, events)
     executor.add_node(node)
     try:
         while not stop:
@@ -172,6 +185,18 @@ def _run(
         node.close()
         executor.shutdown()
         node.leave()
+
+
+def _executor(context: Context, events: bool) -> Executor:
+    if events:
+        try:
+            from rclpy.experimental import EventsExecutor  # not in every rclpy that this runs with
+        except ImportError:
+            pass
+        else:
+            executor: Executor = EventsExecutor(context=context)
+            return executor
+    return SingleThreadedExecutor(context=context)
 
 
 def _first_clause(error: RuntimeError) -> str:

@@ -6,7 +6,7 @@ Units and axes as in REP-103, frames as in REP-105. Times are whole nanoseconds,
 from __future__ import annotations
 
 import math
-from typing import Any, NamedTuple
+from typing import Any
 
 import numpy as np
 from builtin_interfaces.msg import Time
@@ -14,12 +14,12 @@ from geometry_msgs.msg import Pose as PoseMsg
 from geometry_msgs.msg import PoseArray, PoseStamped, PoseWithCovarianceStamped, Quaternion, Twist, TwistStamped
 from nav_msgs.msg import Odometry
 
+from fieldnav_ros.crowd import NANO, Mover, Reading, Sighting
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.model import Pose
 from fieldnav_ros.nodes.payloads import LARGEST_COORDINATE, LARGEST_SPEED
 from fieldnav_ros.parameters import FloatArray
 
-NANO = 1_000_000_000
 UNIT_TOLERANCE = 0.01
 """How far from 1 the length of a quaternion may be."""
 LARGEST_CROWD = 200
@@ -29,33 +29,6 @@ POSE_TYPES: dict[str, Any] = {
     "PoseWithCovarianceStamped": PoseWithCovarianceStamped,
     "Odometry": Odometry,
 }
-
-
-class Reading(NamedTuple):
-    """A pose and when it was so: stamp in ns, m, m, rad."""
-
-    stamp: int
-    x: float
-    y: float
-    yaw: float
-
-
-class Sighting(NamedTuple):
-    """Obstacles without names and when they were there: stamp in ns, places in m, each (K,)."""
-
-    stamp: int
-    x: FloatArray
-    y: FloatArray
-
-
-class Mover(NamedTuple):
-    """One obstacle that reports its own motion: stamp in ns, m, m/s in the floor's frame."""
-
-    stamp: int
-    x: float
-    y: float
-    vx: float
-    vy: float
 
 
 def nanoseconds(stamp: Time) -> int:
@@ -105,8 +78,7 @@ def sighting_from(message: PoseArray, frame: str) -> Sighting:
     if len(message.poses) > LARGEST_CROWD:
         raise InputError.of("obstacles: number of poses", len(message.poses), f"at most {LARGEST_CROWD}")
     places = [_place(pose.position, f"obstacles: pose {index}") for index, pose in enumerate(message.poses)]
-    table = np.array(places, dtype=float).reshape(-1, 2)
-    return Sighting(nanoseconds(message.header.stamp), table[:, 0], table[:, 1])
+    return Sighting(nanoseconds(message.header.stamp), np.array(places, dtype=float).reshape(-1, 2).T)
 
 
 def mover_from(message: Odometry, frame: str, what: str) -> Mover:
@@ -123,6 +95,15 @@ def mover_from(message: Odometry, frame: str, what: str) -> Mover:
     return Mover(
         reading.stamp, reading.x, reading.y, cos * along - sin * across, sin * along + cos * across
     )  # fmt: skip
+
+
+def speeds_from(message: TwistStamped | Twist) -> tuple[float, float]:
+    """Return speed (m/s) and turn rate (rad/s) of a velocity command; InputError where one is not finite."""
+    twist = message.twist if isinstance(message, TwistStamped) else message
+    return (
+        _finite(float(twist.linear.x), "cmd_vel: linear.x"),
+        _finite(float(twist.angular.z), "cmd_vel: angular.z"),
+    )
 
 
 def pose_message(x: float, y: float, yaw: float, frame: str, stamp: int) -> PoseStamped:

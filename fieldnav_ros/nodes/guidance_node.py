@@ -15,16 +15,16 @@ from rclpy.parameter import Parameter
 from std_msgs.msg import Bool, String
 from visualization_msgs.msg import MarkerArray
 
+from fieldnav_ros.crowd import Crowd
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.model import Robot
 from fieldnav_ros.nodes import convert, markers
-from fieldnav_ros.nodes.base import ERROR, LATCHED, OK, RELIABLE, SENSOR, WARN, FieldnavNode, run, yard_of
-from fieldnav_ros.nodes.crowd import Crowd
+from fieldnav_ros.nodes.base import ERROR, LATCHED, OK, RELIABLE, WARN, FieldnavNode, incoming_qos, run, yard_of
 from fieldnav_ros.nodes.declare import tunable_settings
 from fieldnav_ros.nodes.guidance_settings import SETTINGS
 from fieldnav_ros.nodes.payloads import RunEpisode, decode_outcome, decode_request
-from fieldnav_ros.nodes.pilot import Halt, Order, Pilot, PilotRules
 from fieldnav_ros.parameters import ParameterSet
+from fieldnav_ros.pilot import Halt, Order, Pilot, PilotRules
 from fieldnav_ros.tracking import Rules
 from fieldnav_ros.yard import Arrival, Yard
 
@@ -86,7 +86,7 @@ class GuidanceNode(FieldnavNode):
 
     def _open_topics(self) -> None:
         given = self.settings
-        incoming = RELIABLE if given["reliable"] else SENSOR
+        incoming = incoming_qos(given)
         self._heading = self.create_publisher(PoseStamped, "heading", RELIABLE)
         command = TwistStamped if given["stamped_cmd"] else Twist
         self._command = self.create_publisher(command, "cmd_vel", RELIABLE) if given["publish_cmd"] else None
@@ -119,7 +119,7 @@ class GuidanceNode(FieldnavNode):
         except InputError as error:
             self._stop(self.pilot.on_bad_obstacles("obstacles", str(error)))
             return
-        self.pilot.crowd.see(sighting, self._now() if self._by_arrival else sighting.stamp)
+        self.pilot.crowd.see(sighting, self._moment(sighting.stamp))
         self._act(self.pilot.on_obstacles("obstacles"))
 
     def on_mover(self, topic: str, message: Odometry) -> None:
@@ -129,13 +129,13 @@ class GuidanceNode(FieldnavNode):
         except InputError as error:
             self._stop(self.pilot.on_bad_obstacles(topic, str(error)))
             return
-        self.pilot.crowd.hear(topic, mover, self._now() if self._by_arrival else mover.stamp)
+        self.pilot.crowd.hear(topic, mover, self._moment(mover.stamp))
         self._act(self.pilot.on_obstacles(topic))
 
     def on_goal(self, message: PoseStamped) -> None:
         """Take a goal outside episodes; one that cannot be used loses the goal."""
         if self.pilot.episode is not None:
-            self.warn("goals_ignored", f"goal ignored: episode {self.pilot.episode.episode} is running with its own")
+            self.warn("goals_ignored", f"goal ignored: episode {self.pilot.episode} is running with its own")
             return
         try:
             self.pilot.take_goal(convert.goal_from(message, self.frame))
@@ -165,18 +165,17 @@ class GuidanceNode(FieldnavNode):
 
     def _begin(self, request: RunEpisode) -> None:
         running = self.pilot.episode
-        if request.episode == self._ended or (running is not None and request.episode == running.episode):
+        if request.episode == self._ended or (request.episode == running):
             return  # a repeated message
         if request.frame != self.frame:
             self.pilot.end_episode()
             reason = f"episode {request.episode} not begun: frame is {request.frame!r}, must be {self.frame!r}"
             self._stop(self.pilot.refuse(Halt("bad_goal", reason)))
             return
-        self.pilot.start_episode(request)
+        self.pilot.start_episode(request.episode, request.layout.goal, request.time_limit)
 
     def _end(self, episode: str, how: str) -> None:
-        running = self.pilot.episode
-        if running is None or running.episode != episode:
+        if self.pilot.episode != episode:
             return
         self._ended = episode
         self.pilot.end_episode()
@@ -232,6 +231,10 @@ class GuidanceNode(FieldnavNode):
     def _now(self) -> int:
         return time.monotonic_ns() if self._by_arrival else int(self.get_clock().now().nanoseconds)
 
+    def _moment(self, stamp: int) -> int:
+        """Return when obstacles were so, on the clock of the poses' moments."""
+        return self._now() if self._by_arrival and not self.settings["match_stamps"] else stamp
+
     def close(self) -> None:
         """Stop the robot: three times, 30 ms apart, so that one is seen to leave before the context goes."""
         for _ in range(3):
@@ -244,7 +247,7 @@ class GuidanceNode(FieldnavNode):
         episode = self.pilot.episode
         if episode is not None and any(parameter.name in _TUNABLE for parameter in parameters):
             return SetParametersResult(
-                successful=False, reason=f"refused: an episode is running ({episode.episode}); try again after it"
+                successful=False, reason=f"refused: an episode is running ({episode}); try again after it"
             )  # fmt: skip
         try:
             for parameter in parameters:
@@ -277,7 +280,7 @@ class GuidanceNode(FieldnavNode):
         """Return what diagnostics show of guidance."""
         order, episode = self._order, self.pilot.episode
         return {
-            "episode": episode.episode if episode else "",
+            "episode": episode or "",
             "model": self.pilot.model,
             "held": self.pilot.held,
             "obstacles": order.view.obstacles.x.shape[0] if order else "",
@@ -287,7 +290,7 @@ class GuidanceNode(FieldnavNode):
 
 def main(args: Sequence[str] | None = None) -> int:
     """Run the guidance node; return the exit code."""
-    return run("guidance_node", lambda context: GuidanceNode(context=context), args)
+    return run("guidance_node", lambda context: GuidanceNode(context=context), args, events=True)
 
 
 if __name__ == "__main__":

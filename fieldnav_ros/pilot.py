@@ -12,12 +12,10 @@ from typing import NamedTuple
 
 import numpy as np
 
+from fieldnav_ros.crowd import NANO, Crowd, Reading, View
 from fieldnav_ros.drive import wrap
 from fieldnav_ros.guide import Memory, Senses, guide
 from fieldnav_ros.model import Pose, Robot
-from fieldnav_ros.nodes.convert import NANO, Reading
-from fieldnav_ros.nodes.crowd import Crowd, View
-from fieldnav_ros.nodes.payloads import RunEpisode
 from fieldnav_ros.parameters import Numbers
 from fieldnav_ros.world.plant import arc
 from fieldnav_ros.yard import Arrival, Floor
@@ -26,6 +24,8 @@ JUMP_SLACK = 0.10
 """Metres by which two poses may differ more than the robot can have driven."""
 JUMP_SLACK_YAW = 0.5
 """The same for yaw, in rad."""
+LOCKSTEP_PAUSE = 0.9
+"""Seconds between two stamps of a lockstep simulation that mean another episode."""
 OVERDUE = 2.0
 """Seconds past an episode's time limit after which guidance gives it up by itself."""
 
@@ -75,7 +75,8 @@ class Pilot:
     def __init__(self, rules: PilotRules, crowd: Crowd, numbers: Numbers, model: str) -> None:
         self.rules, self.crowd, self.numbers, self.model = rules, crowd, numbers, model
         self.goal: Pose | None = None
-        self.episode: RunEpisode | None = None
+        self.episode: str | None = None
+        self._time_limit = 0.0
         self.held = False
         self.standing: Halt = NO_GOAL
         self._blind: dict[str, str] = {}
@@ -91,9 +92,9 @@ class Pilot:
         """Set the goal outside episodes; None: it is lost."""
         self.goal, self._arrived = goal, False
 
-    def start_episode(self, request: RunEpisode) -> None:
-        """Take the episode's goal and forget everything from before."""
-        self.episode, self.goal = request, request.layout.goal
+    def start_episode(self, episode: str, goal: Pose, time_limit: float) -> None:
+        """Take the episode's goal and forget everything from before; ``time_limit`` in s."""
+        self.episode, self.goal, self._time_limit = episode, goal, time_limit
         self._arrived, self._episode_start = False, None
         self._start_anew()
 
@@ -142,6 +143,8 @@ class Pilot:
             return self._stand(self._hold())
         if self.goal is None:
             return self._stand(NO_GOAL)
+        if self.rules.match_stamps:
+            return None  # the simulator may take its time; it obeys only commands with its pose's stamp
         if self._last_moment is None:
             return self._stand(Halt("no_pose", "no pose has come yet"))
         age = (now - self._last_moment) / NANO
@@ -149,8 +152,6 @@ class Pilot:
             halt = Halt(
                 "stale_pose", f"the newest pose is {age:.2f} s old, may be at most {self.rules.pose_timeout:g} s"
             )
-            if self.rules.match_stamps:  # the simulator waits and obeys only commands with its pose's stamp
-                return halt
             return self._stand(halt)
         return None
 
@@ -160,6 +161,8 @@ class Pilot:
 
     def seen(self, now: int) -> View:
         """Return the obstacles as they are known at the newest pose, for a picture; without any pose, now."""
+        if self.rules.match_stamps:
+            return self.crowd.at(self.crowd.stamp or now)
         return self.crowd.at(self._last_moment if self._last_moment is not None else now)
 
     # how it is decided
@@ -177,7 +180,8 @@ class Pilot:
             return self._stand(halt)
         if self.rules.match_stamps and self.crowd.stamp != reading.stamp:
             return None
-        view = self.crowd.at(self._last_moment, self.rules.command_delay)
+        moment = reading.stamp if self.rules.match_stamps else self._last_moment
+        view = self.crowd.at(moment, self.rules.command_delay)
         x, y, yaw = self._predicted(reading)
         row = [np.array([value]) for value in (x, y, yaw, goal.x, goal.y, goal.yaw)]
         advice = guide(
@@ -217,7 +221,7 @@ class Pilot:
     def _advance(self, before: Reading | None, reading: Reading) -> None:
         """Let time pass from the last pose to this one."""
         dt = self.rules.pose_period if before is None else (reading.stamp - before.stamp) / NANO
-        if dt > self.rules.pose_timeout and not self.rules.match_stamps:
+        if dt > (LOCKSTEP_PAUSE if self.rules.match_stamps else self.rules.pose_timeout):
             self._rest()  # the robot was told to stand meanwhile
             dt = self.rules.pose_period
         self._memory_before, self._dt = self._memory, dt
@@ -234,9 +238,9 @@ class Pilot:
         if self._episode_start is None:
             self._episode_start = reading.stamp
         passed = (reading.stamp - self._episode_start) / NANO
-        if passed <= self.episode.time_limit + OVERDUE:
+        if passed <= self._time_limit + OVERDUE:
             return None
-        name = self.episode.episode
+        name = self.episode
         self.end_episode()
         return Halt("episode_overdue", f"episode {name} has run for {passed:.1f} s and nobody has ended it")
 
