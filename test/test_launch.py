@@ -1,0 +1,98 @@
+"""Launch files name only executables, files, arguments and parameters that exist.
+
+The launch system itself is not on every machine, so the files are kept plain and read here as XML.
+"""
+
+from __future__ import annotations
+
+import importlib
+import re
+import xml.etree.ElementTree as ET
+from collections.abc import Iterator
+from pathlib import Path
+
+import pytest
+
+from fieldnav_ros.resources import config_path
+
+pytest.importorskip("rclpy", reason="a node's parameters are declared in modules that import rclpy")
+
+pytestmark = pytest.mark.ros
+FOLDER = Path(__file__).parent.parent / "launch"
+FILES = sorted(FOLDER.glob("*.launch.xml"))
+SHARED = "$(find-pkg-share fieldnav_ros)/"
+
+
+def tree(path: Path) -> ET.Element:
+    return ET.parse(path).getroot()
+
+
+def settings_of(executable: str) -> set[str]:
+    module = "guidance_settings" if executable == "guidance_node" else executable
+    return {setting.name for setting in importlib.import_module(f"fieldnav_ros.nodes.{module}").SETTINGS}
+
+
+def values(root: ET.Element) -> Iterator[str]:
+    for element in root.iter():
+        yield from element.attrib.values()
+
+
+def test_there_are_launch_files() -> None:
+    assert {path.name for path in FILES} >= {"sim.launch.xml", "hardware.launch.xml"}
+
+
+@pytest.mark.parametrize("path", FILES, ids=lambda path: path.name)
+def test_only_known_elements_and_attributes_are_used(path: Path) -> None:
+    """The subset of the ROS 2 launch XML format (docs.ros.org, "Using XML, YAML and Python for ROS 2 launch files")."""
+    known = {
+        "launch": set(),
+        "arg": {"name", "default", "description"},
+        "group": {"if", "unless"},
+        "node": {"pkg", "exec", "name", "namespace", "output", "if", "unless"},
+        "param": {"name", "value", "from"},
+        "remap": {"from", "to"},
+    }
+    for element in tree(path).iter():
+        assert set(element.attrib) <= known[element.tag], element.tag
+
+
+@pytest.mark.parametrize("path", FILES, ids=lambda path: path.name)
+def test_nodes_are_executables_of_this_package(path: Path, root: Path) -> None:
+    built = set(re.findall(r'"(\w+_node)', (root / "setup.py").read_text()))
+    for node in tree(path).iter("node"):
+        assert node.get("pkg") == "fieldnav_ros"
+        assert node.get("exec") in built
+        assert node.get("exec") == node.get("name"), "files in config/ address nodes by these names"
+
+
+@pytest.mark.parametrize("path", FILES, ids=lambda path: path.name)
+def test_parameters_are_declared_by_their_nodes(path: Path) -> None:
+    for node in tree(path).iter("node"):
+        given = {param.get("name") for param in node.iter("param") if param.get("name")}
+        assert given <= settings_of(str(node.get("exec")))
+
+
+@pytest.mark.parametrize("path", FILES, ids=lambda path: path.name)
+def test_arguments_are_declared_described_and_used(path: Path) -> None:
+    declared = {arg.get("name"): arg for arg in tree(path).iter("arg")}
+    used = {name for value in values(tree(path)) for name in re.findall(r"\$\(var (\w+)\)", value)}
+    assert used == set(declared)
+    assert all(arg.get("description") for arg in declared.values())
+
+
+@pytest.mark.parametrize("path", FILES, ids=lambda path: path.name)
+def test_files_named_are_shipped(path: Path) -> None:
+    for value in values(tree(path)):
+        for name in re.findall(re.escape(SHARED) + r"config/([\w./]+)", value):
+            assert config_path(name).is_file()
+        assert "$(find-pkg-share" not in value.replace(SHARED, "")
+
+
+def test_no_simulator_starts_beside_real_hardware() -> None:
+    assert "simulator_node" not in {node.get("exec") for node in tree(FOLDER / "hardware.launch.xml").iter("node")}
+
+
+def test_topics_of_a_stack_can_be_named_for_hardware() -> None:
+    names = {arg.get("name") for arg in tree(FOLDER / "hardware.launch.xml").iter("arg")}
+    topics = {"pose", "obstacles", "cmd_vel", "heading"}
+    assert names >= topics | {"pose_type", "namespace", "yard", "ledger", "floor_time"}
