@@ -15,6 +15,7 @@ from typing import Any, TypeVar
 import rclpy
 from diagnostic_msgs.msg import DiagnosticArray, DiagnosticStatus, KeyValue
 from rclpy.context import Context
+from rclpy.executors import Executor, SingleThreadedExecutor
 from rclpy.node import Node
 from rclpy.parameter import Parameter
 from rclpy.qos import DurabilityPolicy, QoSProfile, ReliabilityPolicy, qos_profile_sensor_data
@@ -190,7 +191,7 @@ def _run(
 def _executor(context: Context, events: bool) -> Executor:
     if events:
         try:
-            from rclpy.experimental import EventsExecutor  # not in every rclpy that this runs with
+            from rclpy.experimental.events_executor import EventsExecutor  # not in every rclpy that this runs with
         except ImportError:
             pass
         else:
