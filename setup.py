@@ -71,6 +71,12 @@ def config_files() -> list[Path]:
     return sorted(path for path in Path("config").rglob("*") if path.is_file() and not path.name.startswith("."))
 
 
+def package_files() -> list[str]:
+    """Return what lies in the package and is no code, such as templates."""
+    paths = sorted(path for path in Path(NAME).rglob("*") if path.is_file() and path.suffix not in (".py", ".pyc"))
+    return [path.relative_to(NAME).as_posix() for path in paths if not path.name.startswith(".")]
+
+
 def shared_files() -> list[tuple[str, list[str]]]:
     """Return what goes outside the Python package, as (folder under the prefix, files)."""
     folders = {

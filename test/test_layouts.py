@@ -24,6 +24,8 @@ import setuptools
 pytestmark = pytest.mark.layout
 
 LAYOUTS = ("checkout", "wheel", "editable", "colcon", "colcon-symlink")
+# pip installs no data files for an editable installation, and a checkout is no prefix that launch could look in.
+in_a_prefix = pytest.mark.parametrize("layout", ("wheel", "colcon", "colcon-symlink"), indirect=True)
 NODES = ("guidance_node", "tuner_node", "simulator_node", "judge_node")
 START_TIME, STOP_TIME = 120.0, 60.0
 """Seconds until a busy machine must have started or stopped four processes."""
@@ -32,7 +34,9 @@ FIND_FILES = """
 import json, pathlib, sys
 import fieldnav_ros
 from fieldnav_ros.resources import config_path
+package = pathlib.Path(fieldnav_ros.__file__).parent
 print(json.dumps({
+    "beside the code": [name for name in json.loads(sys.argv.pop(1)) if (package / name).is_file()],
     "package": str(pathlib.Path(fieldnav_ros.__file__).resolve()),
     "files": {name: config_path(name).read_text("utf-8") for name in sys.argv[1:]},
 }))
@@ -150,10 +154,19 @@ def shipped(root: Path) -> dict[str, str]:
     return {path.relative_to(folder).as_posix(): path.read_text("utf-8") for path in paths}
 
 
-def test_every_file_of_config_is_found(layout: Layout) -> None:
+def beside_the_code(root: Path) -> list[str]:
+    """Return what lies in the package and is no code: templates, py.typed (PEP 561)."""
+    package = root / "fieldnav_ros"
+    paths = sorted(path for path in package.rglob("*") if path.is_file() and path.suffix not in (".py", ".pyc"))
+    return [path.relative_to(package).as_posix() for path in paths]
+
+
+def test_every_file_that_the_code_reads_is_found(layout: Layout) -> None:
     expected = shipped(layout.source)
-    seen = json.loads(layout.run(layout.python, "-c", FIND_FILES, *expected).stdout)
+    beside = beside_the_code(layout.source)
+    seen = json.loads(layout.run(layout.python, "-c", FIND_FILES, json.dumps(beside), *expected).stdout)
     assert seen["files"] == expected
+    assert seen["beside the code"] == beside
     package = Path(seen["package"])
     if layout.name in ("wheel", "colcon"):
         assert package.is_relative_to(layout.prefix)
@@ -161,10 +174,9 @@ def test_every_file_of_config_is_found(layout: Layout) -> None:
         assert package.is_relative_to(layout.source)
 
 
+@in_a_prefix
 def test_ros_tools_find_the_package_by_the_ament_index(layout: Layout) -> None:
     """Where the marker lies is ament's rule (ament_cmake's resource index, doc/resource_index.md)."""
-    if layout.name in ("checkout", "editable"):
-        pytest.skip("pip installs no data files for an editable installation, and a checkout is no prefix")
     share = layout.prefix / "share"
     assert (share / "ament_index/resource_index/packages/fieldnav_ros").is_file()
     assert (share / "fieldnav_ros/package.xml").read_bytes() == (layout.source / "package.xml").read_bytes()
@@ -174,10 +186,9 @@ def test_ros_tools_find_the_package_by_the_ament_index(layout: Layout) -> None:
     assert {path.name for path in (share / "fieldnav_ros/launch").iterdir()} == launch_files
 
 
+@in_a_prefix
 def test_launch_finds_the_executables_in_lib(layout: Layout) -> None:
     """launch_ros takes what is executable in lib/<package> (ros2pkg.api.get_executable_paths): all of it, once."""
-    if layout.name in ("checkout", "editable"):
-        pytest.skip("no prefix that launch could look in")
     folder = layout.prefix / "lib" / "fieldnav_ros"
     found = {path.name for path in folder.iterdir() if os.access(path, os.X_OK)}
     assert found == {"fieldnav", *NODES}
@@ -195,10 +206,9 @@ def test_the_command_line_starts(layout: Layout) -> None:
 
 
 @pytest.mark.ros
+@in_a_prefix
 def test_the_nodes_start_appear_in_the_graph_and_stop_when_asked(layout: Layout, tmp_path: Path) -> None:
     """Each executable as launch starts it; SIGINT ends it with exit code 0."""
-    if layout.name in ("checkout", "editable"):
-        pytest.skip("no prefix that launch could look in; nodes run as modules in their own tests")
     processes = [
         subprocess.Popen(
             [layout.prefix / "lib" / "fieldnav_ros" / node],
