@@ -2,7 +2,7 @@
 
 The order of things: search, generation by generation, until only the verdict's share of the floor time is left;
 then the search's favourite is named challenger and meets the champion in pairs on layouts of their own; the verdict;
-and another round where enough floor time is left.
+and another round where enough floor time is left. A search with a curriculum goes through its easier grades first.
 """
 
 from __future__ import annotations
@@ -14,6 +14,7 @@ import numpy as np
 
 from fieldnav_ros.model import Layout
 from fieldnav_ros.tuning import events as ev
+from fieldnav_ros.tuning.curriculum import STAGE_WIDENING, stage_over
 from fieldnav_ros.tuning.schedule import Plan, alpha_of_round, make_plan
 from fieldnav_ros.tuning.search import Search
 from fieldnav_ros.tuning.space import SPACE
@@ -21,13 +22,14 @@ from fieldnav_ros.tuning.state import Batch, InService, Round, State
 
 Draw = Callable[[str, int], Layout]  # (grade, seed) -> layout; must be a function of the two alone
 ENGINE, ORDER, SEARCH_LAYOUTS, VERDICT_LAYOUTS = range(4)  # streams of randomness that never meet
+ROLES = ("candidate", "control")
 LARGEST_SEED = 2**53  # so that a seed survives JSON readers that hold numbers as doubles
 
 
 def start_search(state: State) -> Search:
-    """Return the engine before its first generation: at the prior, or around the set in service at the start."""
+    """Return the engine before the stage's first generation: at its prior, or around the first set in service."""
     config = state.told
-    seed = (config.seed, ENGINE)
+    seed = (config.seed, ENGINE, *([state.stage.number] if state.stage.number else []))
     if state.prior is not None:
         return Search.from_prior(state.prior, seed, config.population)
     return Search(SPACE.to_unit(state.initial.parameters), config.sigma, seed, config.population)
@@ -36,8 +38,9 @@ def start_search(state: State) -> Search:
 def plan_of(state: State) -> Plan:
     """Return the plan for the rest of the session."""
     return make_plan(
-        state.told, state.times, state.floor_used_s, state.round_budget_s, in_verdict=state.round is not None
-    )
+        state.told, state.times, state.floor_used_s, state.round_budget_s, state.round is not None,
+        state.episodes_before,
+    )  # fmt: skip
 
 
 @dataclass(frozen=True)
@@ -63,13 +66,27 @@ class Decider:
         config, plan = state.told, plan_of(state)
         if state.rounds >= config.rounds:
             return ev.SessionEnded(reason=f"{state.rounds} of {config.rounds} verdicts reached")
-        width = self.search.population + config.control
-        blocks = min(config.layouts, int(plan.search_left_s / (width * plan.step_s)))
+        blocks = min(config.layouts, plan.search_episodes // (self.search.population + config.control))
+        why = stage_over(state, plan, blocks) if state.stage.number < len(config.lead_in) else None
+        if why is not None:
+            return self._stage(state, why)
         if blocks:
             return self._generation(state, blocks)
-        if plan.floor_left_s < 2 * config.least_pairs * plan.step_s:
+        if plan.episodes_left < 2 * config.least_pairs:
             return ev.SessionEnded(reason="floor time used up")
         return self._challenger(state) or ev.SessionEnded(reason="too little floor time left for another round")
+
+    def _stage(self, state: State, why: str) -> ev.StageBegun:
+        config, number = state.told, state.stage.number + 1
+        following = config.lead_in[number] if number < len(config.lead_in) else config
+        learnt = self.search.prior(f"grade {state.stage.grade}", state.times.episodes)
+        return ev.StageBegun(
+            number=number,
+            grade=following.grade,
+            time_limit=following.time_limit,
+            prior=learnt.widened(STAGE_WIDENING),
+            reason=why,
+        )
 
     def _challenger(self, state: State) -> ev.ChallengerNamed | None:
         if len(state.generations) > state.generations_before:
@@ -121,7 +138,7 @@ class Decider:
             phase=phase,
             batch=state.next_batch,
             sets=tuple(sets),
-            layouts=tuple(self.draw(state.told.grade, int(seed) % LARGEST_SEED) for seed in seeds),
+            layouts=tuple(self.draw(state.stage.grade, int(seed) % LARGEST_SEED) for seed in seeds),
             runs=tuple(
                 ev.Run(episode_id=state.next_episode + place, set_index=chosen, layout_index=layout)
                 for place, (chosen, layout) in enumerate(places)
@@ -138,16 +155,16 @@ class Decider:
         if current.against.accepted:
             return _reached(current, "keep", "the challenger was shown to be worse")
         plan = plan_of(state)
-        if plan.floor_left_s <= 0:
+        if plan.used_up:
             return _reached(current, "keep", "floor time used up")
         batch = state.batch
         if batch is not None:
             between_pairs = len(batch.begun()) == len(batch.compared)
             if len(batch.compared) < len(batch.opened.layouts) and (
-                not between_pairs or plan.floor_left_s >= 2 * plan.step_s
+                not between_pairs or plan.episodes_left >= 2
             ):
                 return None
-        pairs = min(state.told.pairs_at_once, int(plan.floor_left_s / (2 * plan.step_s)))
+        pairs = min(state.told.pairs_at_once, plan.episodes_left // 2)
         return self._pairs(state, current, pairs) if pairs else _reached(current, "keep", "floor time used up")
 
 
@@ -163,40 +180,37 @@ def _named(item: InService, role: ev.Role) -> ev.NamedSet:
 
 def _close_generation(state: State, batch: Batch) -> ev.GenerationClosed | None:
     """Close when all have run; early, after whole blocks, where the next block would cut into the verdict's time."""
-    complete, begun = batch.complete(), batch.begun()
-    if len(complete) < len(batch.opened.layouts):
+    blocks = len(batch.complete())
+    if blocks < len(batch.opened.layouts):
         plan = plan_of(state)
-        between_blocks = bool(complete) and len(begun) == len(complete)
-        too_long = len(batch.opened.sets) * plan.step_s > plan.search_left_s
-        if plan.floor_left_s > 0 and not (between_blocks and too_long):
+        between_blocks = bool(blocks) and len(batch.begun()) == blocks
+        too_long = len(batch.opened.sets) > plan.search_episodes
+        if not plan.used_up and not (between_blocks and too_long):
             return None
-    candidates = [index for index, item in enumerate(batch.opened.sets) if item.role == "candidate"]
-    controls = [index for index, item in enumerate(batch.opened.sets) if item.role == "control"]
-    costs = np.array([[batch.costs[run.episode_id] for run in batch.layout_runs(index)] for index in complete])
-    means = costs.mean(axis=0) if complete else np.full(len(batch.opened.sets), np.nan)
+    means = np.mean(batch.layout_costs(), axis=0) if blocks else np.full(len(batch.opened.sets), np.nan)
+    costs = {role: [float(mean) for mean, item in zip(means, batch.opened.sets) if item.role == role] for role in ROLES}
     return ev.GenerationClosed(
         batch=batch.opened.batch,
-        blocks=len(complete),
-        costs=tuple(float(means[index]) for index in candidates) if complete else (),
-        control=float(means[controls[0]]) if complete and controls else None,
+        blocks=blocks,
+        costs=tuple(costs["candidate"]) if blocks else (),
+        control=costs["control"][0] if blocks and costs["control"] else None,
     )
 
 
 def _compare(batch: Batch, current: Round) -> ev.PairCompared | None:
-    ready = [index for index in batch.complete() if index not in batch.compared]
-    if not ready:
-        return None
-    champion, challenger = (batch.costs[run.episode_id] for run in batch.layout_runs(ready[0]))
-    difference = champion - challenger
-    return ev.PairCompared(
-        round=current.number,
-        pair=current.evidence.pairs + 1,
-        layout_index=ready[0],
-        champion_cost=champion,
-        challenger_cost=challenger,
-        difference=difference,
-        log_evidence=current.evidence.after(difference).log_e,
-    )
+    for index, (champion, challenger) in zip(batch.complete(), batch.layout_costs()):
+        if index not in batch.compared:
+            difference = champion - challenger
+            return ev.PairCompared(
+                round=current.number,
+                pair=current.evidence.pairs + 1,
+                layout_index=index,
+                champion_cost=champion,
+                challenger_cost=challenger,
+                difference=difference,
+                log_evidence=current.evidence.after(difference).log_e,
+            )
+    return None
 
 
 def _reached(current: Round, verdict: ev.Decision, reason: str) -> ev.VerdictReached:

@@ -9,34 +9,15 @@ from pydantic import Field, TypeAdapter, ValidationError
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.model import Frozen, Layout, Outcome, Positive
 from fieldnav_ros.parameters import ParameterSet
+from fieldnav_ros.tuning.config import NonNegative
+from fieldnav_ros.tuning.config import SessionConfig as SessionConfig  # read as ``events.SessionConfig`` by many
 from fieldnav_ros.tuning.space import Prior
 from fieldnav_ros.yard import Yard
 
 Phase = Literal["search", "verdict"]
 Role = Literal["candidate", "control", "champion", "challenger"]
 Decision = Literal["accept", "keep"]
-NonNegative = Annotated[float, Field(ge=0)]
 Text = Annotated[str, Field(max_length=2000)]
-
-
-class SessionConfig(Frozen):
-    """What a session is told before it begins. Times in s."""
-
-    seed: int = Field(default=0, ge=0, description="everything random in the session comes from it")
-    floor_time_s: Positive = Field(description="floor time the session may use, resets included")
-    grade: str = Field(default="moving", min_length=1, description="grade of the yard that layouts are drawn from")
-    time_limit: Positive = Field(default=10.0, description="time allowed for an episode; scales the costs of failures")
-    population: int | None = Field(default=None, ge=4, le=1000, description="sets per generation; none: the engine's")
-    layouts: int = Field(default=4, ge=1, le=1000, description="layouts per generation, the same for all its sets")
-    sigma: float = Field(default=0.15, gt=0, le=1, description="first step size in the unit cube, without a prior")
-    control: bool = Field(default=True, description="run the champion in every block of the search, to see drift")
-    alpha: float = Field(default=0.05, gt=0, lt=1, description="bound on false acceptance over the whole session")
-    rounds: int = Field(default=2, ge=1, le=16, description="most verdicts in a session; alpha is shared among them")
-    verdict_share: float = Field(default=0.35, gt=0, lt=1, description="share of the floor time kept for the verdict")
-    least_pairs: int = Field(default=8, ge=1, description="fewest pairs that a verdict is begun with")
-    pairs_at_once: int = Field(default=1, ge=1, le=1000, description="pairs opened together, for a batch simulator")
-    episode_guess_s: Positive = Field(default=3.0, description="mean episode, until episodes have been seen")
-    reset_guess_s: NonNegative = Field(default=2.0, description="mean reset, until resets have been seen")
 
 
 class NamedSet(Frozen):
@@ -147,6 +128,17 @@ class GenerationClosed(Frozen):
     control: float | None = None
 
 
+class StageBegun(Frozen):
+    """The search moves on to the next grade of its curriculum, from ``prior``: what the last grade taught."""
+
+    kind: Literal["stage_begun"] = "stage_begun"
+    number: int = Field(ge=1)
+    grade: str
+    time_limit: Positive
+    prior: Prior
+    reason: Text
+
+
 class ChallengerNamed(Frozen):
     """The search hands a set to the verdict; ``alpha`` is this round's part of the session's."""
 
@@ -234,8 +226,9 @@ class Noted(Frozen):
 
 
 _Acts = SessionBegun | BatchOpened | EpisodeScored | EpisodeVoided | ReportIgnored | FloorTimeUsed | Noted
-_Decisions = GenerationClosed | ChallengerNamed | PairCompared | VerdictReached | ChampionChanged | SessionEnded
-Event = Annotated[_Acts | _Decisions | Paused | Released | Resumed, Field(discriminator="kind")]
+_Search = GenerationClosed | StageBegun | ChallengerNamed
+_Verdict = PairCompared | VerdictReached | ChampionChanged | SessionEnded
+Event = Annotated[_Acts | _Search | _Verdict | Paused | Released | Resumed, Field(discriminator="kind")]
 _ADAPTER: TypeAdapter[Event] = TypeAdapter(Event)
 
 

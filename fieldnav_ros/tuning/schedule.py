@@ -1,11 +1,14 @@
-"""The plan: how many episodes the floor time holds, how many for the search, how many kept for the verdict."""
+"""The plan: how many episodes the budget holds, how many for the search, how many kept for the verdict.
+
+The budget is floor time, or, where ``SessionConfig.episodes`` is given, a number of episodes.
+"""
 
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
 from typing import NamedTuple
 
-from fieldnav_ros.tuning.events import SessionConfig
+from fieldnav_ros.tuning.config import SessionConfig
 
 GUESS_WEIGHT = 4.0  # the guesses count as much as so many episodes seen
 
@@ -37,7 +40,7 @@ class Times:
 
 
 class Plan(NamedTuple):
-    """What the rest of the floor time is for. Times in s; episodes are expected numbers, rounded down."""
+    """What the rest of the budget is for. Times in s; episodes are expected numbers, rounded down."""
 
     floor_left_s: float
     mean_episode_s: float
@@ -52,20 +55,36 @@ class Plan(NamedTuple):
         """Expected floor time of one episode with its reset (s)."""
         return self.mean_episode_s + self.mean_reset_s
 
+    @property
+    def used_up(self) -> bool:
+        """Whether nothing is left at all; with some time left an episode may still end in it."""
+        return self.floor_left_s <= 0
+
 
 def make_plan(
-    config: SessionConfig, times: Times, floor_used_s: float, round_budget_s: float, in_verdict: bool
+    config: SessionConfig,
+    times: Times,
+    floor_used_s: float,
+    round_budget_s: float,
+    in_verdict: bool,
+    episodes_before: int = 0,
 ) -> Plan:
     """Plan the rest of a session.
 
-    ``round_budget_s`` is the floor time left when the round (search, then verdict) began; ``verdict_share`` of
-    it is kept for the verdict, and never less than ``least_pairs`` take. In the verdict all that is left is for it.
+    ``round_budget_s`` is the floor time left, ``episodes_before`` the number of episodes run, when the round
+    (search, then verdict) began; ``verdict_share`` of what was left then is kept for the verdict, and never less
+    than ``least_pairs`` take. In the verdict all that is left is for it.
     """
-    left = max(config.floor_time_s - floor_used_s, 0.0)
     episode, reset = times.means(config)
     step = episode + reset
-    reserve = max(config.verdict_share * round_budget_s, 2 * config.least_pairs * step)
-    search_s = 0.0 if in_verdict else max(left - reserve, 0.0)
+    if config.episodes is not None:
+        given, count = max(config.episodes - episodes_before, 0), max(config.episodes - times.episodes, 0)
+        reserve = max(int(config.verdict_share * given), 2 * config.least_pairs)
+        search = 0 if in_verdict else max(count - reserve, 0)
+        return Plan(count * step, episode, reset, search * step, count, search, count - search)
+    left = max(config.floor_time_s - floor_used_s, 0.0)
+    reserve_s = max(config.verdict_share * round_budget_s, 2 * config.least_pairs * step)
+    search_s = 0.0 if in_verdict else max(left - reserve_s, 0.0)
     search = int(search_s / step)
     return Plan(left, episode, reset, search_s, int(left / step), search, max(int(left / step) - search, 0))
 

@@ -96,6 +96,10 @@ class Search:
             self._asked = [np.clip(point, 0.0, 1.0) for point in self._engine.ask()]
         return list(self._asked)
 
+    def prior(self, learnt_from: str, episodes: int) -> Prior:
+        """Return what has been learnt so far, for a later search."""
+        return Prior.of(self.favourite, self.covariance, learnt_from, episodes)
+
     def tell(self, generation: Generation) -> None:
         """Take the costs of a generation (smaller is better).
 

@@ -31,10 +31,12 @@ from fieldnav_ros.tuning import events as ev
 from fieldnav_ros.tuning.cost import cost
 from fieldnav_ros.tuning.decide import Decider, Draw, plan_of, start_search, stopped
 from fieldnav_ros.tuning.events import Episode, Event, SessionConfig
+from fieldnav_ros.tuning.fold import fold
 from fieldnav_ros.tuning.schedule import Plan
 from fieldnav_ros.tuning.search import Search
 from fieldnav_ros.tuning.space import Prior
-from fieldnav_ros.tuning.state import InService, State, fold
+from fieldnav_ros.tuning.state import InService, State
+from fieldnav_ros.tuning.status import Summary, phase_of, summary_of
 
 __all__ = ["Draw", "Episode", "InService", "Report", "Session", "SessionConfig"]
 
@@ -56,6 +58,7 @@ class Session:
         self.state = State()
         self._draw = draw
         self._engine: Search | None = None
+        self._engine_stage = 0
         self._outcomes: dict[int, OutcomeKind] = {}
 
     def apply(self, *events: Event) -> None:
@@ -173,50 +176,16 @@ class Session:
 
     def prior(self, learnt_from: str = "") -> Prior:
         """Return what the search has learnt so far, for a later session."""
-        search = self._search_at(self.state)
-        return Prior.of(search.favourite, search.covariance, learnt_from, self.state.times.episodes)
+        return self._search_at(self.state).prior(learnt_from, self.state.times.episodes)
 
-    def summary(self) -> dict[str, str | float | int | None]:
+    def summary(self) -> Summary:
         """Return plain numbers for a status line; times and costs in s."""
-        state, plan = self.state, self.plan
-        current = state.round
-        evidence = current.evidence if current else None
-        return {
-            "phase": self.phase,
-            "episodes_done": state.times.episodes,
-            "episodes_left": 0 if self.ended else plan.episodes_left,
-            "search_episodes_left": 0 if self.ended else plan.search_episodes,
-            "verdict_episodes_left": 0 if self.ended else plan.verdict_episodes,
-            "floor_time_used_s": state.floor_used_s,
-            "floor_time_left_s": plan.floor_left_s,
-            "mean_episode_s": plan.mean_episode_s,
-            "mean_reset_s": plan.mean_reset_s,
-            "generations": len(state.generations),
-            "champion": state.champion.set_id,
-            "champion_cost": state.champion_costs.mean,
-            "challenger": current.challenger.set_id if current else None,
-            "challenger_cost": current.challenger_costs.mean if current else None,
-            "pairs": evidence.pairs if evidence else 0,
-            "mean_difference": evidence.mean if evidence else None,
-            "log_evidence": evidence.log_e if evidence else None,
-            "log_threshold": evidence.log_threshold if evidence else None,
-            "verdicts": state.rounds,
-            "last_verdict": state.verdict.verdict if state.verdict else None,
-            "ended": state.ended,
-        }
+        return summary_of(self.state)
 
     @property
     def phase(self) -> str:
         """One word for where the session stands."""
-        if not self.begun:
-            return "waiting"
-        if self.ended:
-            return "ended"
-        if self.state.released:
-            return "released"
-        if self.state.paused:
-            return "paused"
-        return "verdict" if self.state.round else "search"
+        return phase_of(self.state)
 
     def _report(self, report: Report) -> Event:
         seconds = _seconds("floor time of an episode", report.floor_time_s)
@@ -227,7 +196,7 @@ class Session:
             return ev.ReportIgnored(
                 episode_id=report.episode_id, outcome=report.outcome, source=report.source, reason=reason
             )
-        value = cost(report.outcome, self.config.time_limit)
+        value = cost(report.outcome, self.state.stage.time_limit)
         if value is None:
             return self._voided(report.episode_id, seconds, report.source)
         return ev.EpisodeScored(
@@ -270,7 +239,7 @@ class Session:
         batch = self.state.batch
         if batch is None:
             return []
-        opened, limit = batch.opened, self.config.time_limit
+        opened, limit = batch.opened, self.state.stage.time_limit
         return [
             Episode(
                 id=run.episode_id,
@@ -282,13 +251,14 @@ class Session:
                 layout=opened.layouts[run.layout_index],
                 time_limit=limit,
             )
-            for run in batch.runs
+            for run in batch.runs.values()
             if run.episode_id not in batch.costs
         ]
 
     def _copy(self) -> Session:
         copy = Session(self._draw)
-        copy.state, copy._engine, copy._outcomes = self.state, self._engine, dict(self._outcomes)
+        copy.state, copy._outcomes = self.state, dict(self._outcomes)
+        copy._engine, copy._engine_stage = self._engine, self._engine_stage
         return copy
 
     def _followed(self, events: list[Event]) -> list[Event]:
@@ -306,12 +276,12 @@ class Session:
 
     def _search_at(self, state: State) -> Search:
         """Return the engine told exactly the state's generations; kept, as telling them anew takes time."""
-        search = self._engine
-        if search is None or state.generations[: len(search.told)] != search.told:
+        search, record = self._engine, state.stage_generations
+        if search is None or self._engine_stage != state.stage.number or record[: len(search.told)] != search.told:
             search = start_search(state)
-        for generation in state.generations[len(search.told) :]:
+        for generation in record[len(search.told) :]:
             search.tell(generation)
-        self._engine = search
+        self._engine, self._engine_stage = search, state.stage.number
         return search
 
 

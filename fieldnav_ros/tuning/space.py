@@ -133,6 +133,10 @@ class Prior(Frozen):
             raise InputError(f"{source}: learnt over another space: {departure}")
         return prior
 
+    def widened(self, factor: float) -> Prior:
+        """Return the prior with every standard deviation ``factor`` times as large."""
+        return Prior.of(np.array(self.mean), np.array(self.covariance) * factor**2, self.learnt_from, self.episodes)
+
     def parameters(self) -> ParameterSet:
         """Return the set at the mean."""
         return self.space.from_unit(self.mean)

@@ -1,15 +1,14 @@
-"""A session's state, and the fold that makes it from events. Pure: the same events give the same state."""
+"""A session's state: everything its decisions are made from. ``fold`` makes it from events."""
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
-from typing import Any, NamedTuple
+from typing import NamedTuple
 
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.parameters import DEFAULTS, ParameterSet
 from fieldnav_ros.tuning import events as ev
-from fieldnav_ros.tuning.cost import cost_bound
 from fieldnav_ros.tuning.schedule import Times
 from fieldnav_ros.tuning.search import Generation
 from fieldnav_ros.tuning.space import Prior
@@ -51,34 +50,79 @@ class Control(NamedTuple):
     cost: float
 
 
+class Stage(NamedTuple):
+    """The grade that is run now, since which generation and after how many episodes of the session."""
+
+    number: int = 0
+    grade: str = ""
+    time_limit: float = 0.0
+    generations_before: int = 0
+    episodes_before: int = 0
+
+
+NO_STAGE = Stage()
+
+
 @dataclass(frozen=True)
 class Batch:
-    """Open episodes. ``runs`` holds the ids in force (a rerun replaces the voided one); ``costs`` what is scored."""
+    """Open episodes. ``runs`` holds the ids in force (a rerun replaces the voided one); ``costs`` what is scored.
+
+    ``scored`` counts, for each layout, the sets that have been scored on it, so that a report to a batch of
+    thousands takes no look at all of them.
+    """
 
     opened: ev.BatchOpened
-    runs: tuple[ev.Run, ...]
+    runs: Mapping[int, ev.Run]
+    scored: tuple[int, ...]
     costs: Mapping[int, float] = field(default_factory=dict)
     compared: tuple[int, ...] = ()
 
+    @classmethod
+    def of(cls, opened: ev.BatchOpened) -> Batch:
+        """Return the batch with nothing scored."""
+        return cls(opened, {run.episode_id: run for run in opened.runs}, (0,) * len(opened.layouts))
+
     def run(self, episode_id: int) -> ev.Run | None:
         """Return the run of that id; None where it is not of this batch."""
-        return next((run for run in self.runs if run.episode_id == episode_id), None)
+        return self.runs.get(episode_id)
 
-    def layout_runs(self, layout_index: int) -> list[ev.Run]:
-        """Return the runs on one layout, in the order of their sets."""
-        return sorted((run for run in self.runs if run.layout_index == layout_index), key=lambda run: run.set_index)
+    def role(self, run: ev.Run) -> ev.Role:
+        """Return what the set of a run is in this batch."""
+        return self.opened.sets[run.set_index].role
+
+    def with_cost(self, run: ev.Run, cost: float) -> Batch:
+        """Return the batch with one more run scored."""
+        costs = {**self.costs, run.episode_id: cost}
+        return replace(self, costs=costs, scored=_counted(self.scored, run.layout_index, 1))
+
+    def with_rerun(self, run: ev.Run, episode_id: int) -> Batch:
+        """Return the batch with a run to be done again under another id, in its old place."""
+        again = run.model_copy(update={"episode_id": episode_id})
+        runs = {item.episode_id: item for item in (again if item is run else item for item in self.runs.values())}
+        if run.episode_id not in self.costs:
+            return replace(self, runs=runs)
+        costs = {key: value for key, value in self.costs.items() if key != run.episode_id}
+        return replace(self, runs=runs, costs=costs, scored=_counted(self.scored, run.layout_index, -1))
+
+    def layout_costs(self) -> list[list[float]]:
+        """Return the costs on each layout on which every set has been scored, in the order of the sets."""
+        table: dict[int, list[tuple[int, float]]] = {index: [] for index in self.complete()}
+        for run in self.runs.values():
+            if run.layout_index in table:
+                table[run.layout_index].append((run.set_index, self.costs[run.episode_id]))
+        return [[cost for _, cost in sorted(row)] for row in table.values()]
 
     def complete(self) -> list[int]:
         """Return the layouts on which every set has been scored."""
-        return [
-            index
-            for index in range(len(self.opened.layouts))
-            if all(run.episode_id in self.costs for run in self.layout_runs(index))
-        ]
+        return [index for index, count in enumerate(self.scored) if count == len(self.opened.sets)]
 
-    def begun(self) -> set[int]:
+    def begun(self) -> list[int]:
         """Return the layouts on which some set has been scored."""
-        return {run.layout_index for run in self.runs if run.episode_id in self.costs}
+        return [index for index, count in enumerate(self.scored) if count]
+
+
+def _counted(counts: tuple[int, ...], index: int, change: int) -> tuple[int, ...]:
+    return (*counts[:index], counts[index] + change, *counts[index + 1 :])
 
 
 @dataclass(frozen=True)
@@ -98,10 +142,11 @@ class State:
     """Everything decisions are made from. Counters, clocks and tallies of time are never taken back."""
 
     config: ev.SessionConfig | None = None
-    prior: Prior | None = None
+    prior: Prior | None = None  # where the search of this stage starts
     initial: InService = NO_SET
     champion: InService = NO_SET
     champion_costs: Tally = NO_COSTS
+    stage: Stage = NO_STAGE
     batch: Batch | None = None
     generations: tuple[Generation, ...] = ()
     controls: tuple[Control, ...] = ()
@@ -109,6 +154,7 @@ class State:
     round: Round | None = None
     rounds: int = 0  # verdicts reached
     round_budget_s: float = 0.0
+    episodes_before: int = 0  # this round
     verdict: ev.VerdictReached | None = None  # the last one
     accepted: InService | None = None  # accepted, to be made champion next
     floor_used_s: float = 0.0
@@ -129,182 +175,7 @@ class State:
             raise InputError("the session has not begun: its first event must be session_begun")
         return self.config
 
-
-def fold(state: State, event: ev.Event) -> State:
-    """Return the state after one more event; InputError where the event cannot follow."""
-    if state.config is None and not isinstance(event, ev.SessionBegun):
-        raise InputError.of("first event of a session", event.kind, "session_begun")
-    rule = _RULES.get(type(event))
-    return rule(state, event) if rule else state
-
-
-def _begun(state: State, event: ev.SessionBegun) -> State:
-    if state.config is not None:
-        raise InputError("session_begun came twice, must come once")
-    champion = InService(event.champion_id, event.champion)
-    return replace(
-        state,
-        config=event.config,
-        prior=event.prior,
-        initial=champion,
-        champion=champion,
-        round_budget_s=event.config.floor_time_s,
-    )
-
-
-def _opened(state: State, event: ev.BatchOpened) -> State:
-    following = max((run.episode_id for run in event.runs), default=0) + 1
-    return replace(
-        state,
-        batch=Batch(event, event.runs),
-        next_batch=max(state.next_batch, event.batch + 1),
-        next_episode=max(state.next_episode, following),
-    )
-
-
-def _open(state: State, event: Any) -> Batch:
-    if state.batch is None:
-        raise InputError(f"{event.kind} came while no batch was open")
-    return state.batch
-
-
-def _scored(state: State, event: ev.EpisodeScored) -> State:
-    batch = _open(state, event)
-    run = batch.run(event.episode_id)
-    if run is None or event.episode_id in batch.costs:
-        raise InputError.of("episode scored", event.episode_id, "an open episode without an outcome")
-    role = batch.opened.sets[run.set_index].role
-    tally = state.champion_costs
-    return replace(
-        state,
-        batch=replace(batch, costs={**batch.costs, event.episode_id: event.cost}),
-        champion_costs=tally.after(event.cost) if role in ("control", "champion") else tally,
-        floor_used_s=state.floor_used_s + event.floor_time_s,
-        times=state.times.after(event.outcome.time, event.floor_time_s),
-        last_scored=event.episode_id,
-        before_last=replace(state, before_last=None, last_scored=None),
-    )
-
-
-def _voided(state: State, event: ev.EpisodeVoided) -> State:
-    used = state.floor_used_s + event.floor_time_s
-    if event.episode_id == state.last_scored and state.before_last is not None:
-        state = replace(
-            state.before_last,
-            times=state.times,
-            next_episode=state.next_episode,
-            next_batch=state.next_batch,
-            challengers=state.challengers,
-            paused=state.paused,
-            released=state.released,
-        )
-    batch = _open(state, event)
-    run = batch.run(event.episode_id)
-    if run is None:
-        raise InputError.of("episode voided", event.episode_id, "an open episode or the last one scored")
-    again = run.model_copy(update={"episode_id": event.rerun_id})
-    role = batch.opened.sets[run.set_index].role
-    tally = state.champion_costs
-    cost = batch.costs.get(event.episode_id)
-    if cost is not None and role in ("control", "champion"):
-        tally = Tally(tally.episodes - 1, tally.total - cost)
-    return replace(
-        state,
-        batch=replace(
-            batch,
-            runs=tuple(again if item is run else item for item in batch.runs),
-            costs={key: value for key, value in batch.costs.items() if key != event.episode_id},
-        ),
-        champion_costs=tally,
-        floor_used_s=used,
-        next_episode=max(state.next_episode, event.rerun_id + 1),
-        last_scored=None,
-        before_last=None,
-    )
-
-
-def _generation(state: State, event: ev.GenerationClosed) -> State:
-    batch = _open(state, event)
-    generations, controls = state.generations, state.controls
-    if event.blocks:
-        points = tuple(item.unit for item in batch.opened.sets if item.unit is not None)
-        generations = (*generations, Generation(points, event.costs))
-        if event.control is not None:
-            controls = (*controls, Control(event.batch, event.control))
-    return replace(state, batch=None, generations=generations, controls=controls)
-
-
-def _named(state: State, event: ev.ChallengerNamed) -> State:
-    bound = cost_bound(state.told.time_limit)
-    return replace(
-        state,
-        challengers=state.challengers + 1,
-        round=Round(
-            number=event.round,
-            challenger=InService(event.set_id, event.parameters),
-            evidence=Evidence(bound, event.alpha),
-            against=Evidence(bound, FUTILE),
-        ),
-    )
-
-
-FUTILE = 0.05  # a challenger is dropped early once it is shown, at this level, to be worse; costs no validity
-
-
-def _compared(state: State, event: ev.PairCompared) -> State:
-    batch, current = _open(state, event), state.round
-    if current is None:
-        raise InputError("pair_compared came while no challenger was named")
-    return replace(
-        state,
-        batch=replace(batch, compared=(*batch.compared, event.layout_index)),
-        round=replace(
-            current,
-            evidence=current.evidence.after(event.difference),
-            against=current.against.after(-event.difference),
-            champion_costs=current.champion_costs.after(event.champion_cost),
-            challenger_costs=current.challenger_costs.after(event.challenger_cost),
-        ),
-    )
-
-
-def _verdict(state: State, event: ev.VerdictReached) -> State:
-    accepted = state.round.challenger if state.round and event.verdict == "accept" else None
-    tally = state.round.challenger_costs if state.round and accepted else state.champion_costs
-    return replace(
-        state,
-        batch=None,
-        round=None,
-        rounds=event.round,
-        verdict=event,
-        accepted=accepted,
-        champion_costs=tally,
-        generations_before=len(state.generations),
-        round_budget_s=max(state.told.floor_time_s - state.floor_used_s, 0.0),
-    )
-
-
-def _changed(state: State, event: ev.ChampionChanged) -> State:
-    return replace(state, champion=InService(event.set_id, event.parameters), accepted=None)
-
-
-def _spent(state: State, event: ev.FloorTimeUsed) -> State:
-    return replace(state, floor_used_s=state.floor_used_s + event.seconds)
-
-
-_RULES: dict[type, Callable[[State, Any], State]] = {
-    ev.SessionBegun: _begun,
-    ev.BatchOpened: _opened,
-    ev.EpisodeScored: _scored,
-    ev.EpisodeVoided: _voided,
-    ev.GenerationClosed: _generation,
-    ev.ChallengerNamed: _named,
-    ev.PairCompared: _compared,
-    ev.VerdictReached: _verdict,
-    ev.ChampionChanged: _changed,
-    ev.FloorTimeUsed: _spent,
-    ev.Paused: lambda state, event: replace(state, paused=True),
-    ev.Released: lambda state, event: replace(state, released=True),
-    ev.Resumed: lambda state, event: replace(state, paused=False, released=False),
-    ev.SessionEnded: lambda state, event: replace(state, ended=event.reason),
-}
+    @property
+    def stage_generations(self) -> tuple[Generation, ...]:
+        """The generations of the present stage, which its search engine has been told."""
+        return self.generations[self.stage.generations_before :]

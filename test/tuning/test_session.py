@@ -17,9 +17,10 @@ from fieldnav_ros.errors import InputError, WorkError
 from fieldnav_ros.model import Outcome, OutcomeKind
 from fieldnav_ros.parameters import DEFAULTS
 from fieldnav_ros.tuning import events as ev
+from fieldnav_ros.tuning.fold import fold
 from fieldnav_ros.tuning.session import Report, Session
 from fieldnav_ros.tuning.space import SPACE, Prior
-from fieldnav_ros.tuning.state import State, fold
+from fieldnav_ros.tuning.state import State
 
 SHORT = ev.SessionConfig(seed=5, floor_time_s=500.0, layouts=2, population=4, least_pairs=3)
 NOTED = (ev.Noted, ev.ReportIgnored)
