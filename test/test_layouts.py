@@ -25,7 +25,7 @@ pytestmark = pytest.mark.layout
 
 LAYOUTS = ("checkout", "wheel", "editable", "colcon", "colcon-symlink")
 # pip installs no data files for an editable installation, and a checkout is no prefix that launch could look in.
-in_a_prefix = pytest.mark.parametrize("layout", ("wheel", "colcon", "colcon-symlink"), indirect=True)
+in_a_prefix = pytest.mark.parametrize("layout", ["wheel", "colcon", "colcon-symlink"], indirect=True)
 NODES = ("guidance_node", "tuner_node", "simulator_node", "judge_node")
 START_TIME, STOP_TIME = 120.0, 60.0
 """Seconds until a busy machine must have started or stopped four processes."""
@@ -251,14 +251,15 @@ def wait_for_nodes(wanted: set[str], processes: list[subprocess.Popen[bytes]]) -
         context.try_shutdown()
 
 
-def test_colcon_test_runs_tests_and_says_how_many(source: Path, tmp_path: Path) -> None:
+@pytest.mark.parametrize("layout", ["colcon"], indirect=True)
+def test_colcon_test_runs_tests_and_says_how_many(layout: Layout) -> None:
     """`colcon test` exits with 0 on failures and where it found nothing to run: only its results tell."""
+    workspace = layout.prefix.parent.parent
     command = (colcon(), "--log-base", "log")
     environment = {**os.environ, "PYTEST_ADDOPTS": ""}
-    run(*command, "build", "--base-paths", source, folder=tmp_path)
-    options = ("--base-paths", source, "--pytest-args", "-m", "smoke")
-    run(*command, "test", *options, folder=tmp_path, environment=environment)
-    summary = run(*command, "test-result", "--verbose", folder=tmp_path).stdout
+    options = ("--base-paths", layout.source, "--pytest-args", "-m", "smoke")
+    run(*command, "test", *options, folder=workspace, environment=environment)
+    summary = run(*command, "test-result", "--verbose", folder=workspace).stdout
     numbers = re.search(r"(\d+) tests, (\d+) errors, (\d+) failures, (\d+) skipped", summary)
     assert numbers, summary
     tests, errors, failures, skipped = (int(number) for number in numbers.groups())
