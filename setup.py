@@ -29,7 +29,7 @@ EXTRAS = {
     "ros": [f"ros-jazzy-{wheel}" for wheel in ROS_WHEELS],
     "ros-kilted": [f"ros-kilted-{wheel}" for wheel in ROS_WHEELS],
     "bags": ["rosbags"],
-    "report": ["matplotlib", "jinja2"],
+    "report": ["matplotlib", "jinja2", "markupsafe"],
     "pit": ["rich"],
     "cluster": ["distributed"],
     "benchmark": ["coco-experiment", "numba"],
