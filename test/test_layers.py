@@ -32,7 +32,10 @@ ROS = re.compile(r"rclpy|rclcpp|rcl_|ament_|launch|rosidl|rosgraph|tf2|unique_id
 
 # Pure code gets time, randomness and files from its caller.
 PURE = {"errors", "model", "parameters", "field", "drive", "tracking", "guide", "crowd", "pilot", "world", "tuning"}
-PURE_BUT = {"tuning/ledger.py": "writes the session's record"}
+PURE_BUT = {
+    "tuning/ledger.py": "writes the session's record",
+    "tuning/prior_file.py": "reads the file that a session may start from",
+}
 IMPURE_MODULES = {
     "asyncio", "datetime", "glob", "io", "logging", "multiprocessing", "os", "pathlib", "pickle", "random", "secrets",
     "shutil", "signal", "socket", "sqlite3", "subprocess", "sys", "tempfile", "threading", "time",

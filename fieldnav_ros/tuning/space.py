@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from pathlib import Path
 from typing import Annotated, Any
 
 import numpy as np
@@ -13,7 +12,6 @@ from pydantic import Field, ValidationError, model_validator
 from fieldnav_ros.errors import InputError, shown
 from fieldnav_ros.model import Frozen
 from fieldnav_ros.parameters import TABLE, FloatArray, ParameterSet, Scale
-from fieldnav_ros.yard import read_yaml
 
 SYMMETRY = 1e-9  # largest difference between mirrored elements, as a share of the largest element
 
@@ -144,11 +142,6 @@ class Prior(Frozen):
     def content(self) -> dict[str, Any]:
         """Return what ``parse`` takes, in plain types."""
         return self.model_dump(mode="json")
-
-
-def load_prior(path: str | Path) -> Prior:
-    """Read a prior from a YAML file; InputError names file, key, value and bound."""
-    return Prior.parse(read_yaml(Path(path)), str(path))
 
 
 def dump_prior(prior: Prior) -> str:

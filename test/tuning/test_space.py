@@ -12,7 +12,8 @@ from hypothesis import strategies as st
 
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.parameters import DEFAULTS, TABLE
-from fieldnav_ros.tuning.space import SPACE, Prior, Space, dump_prior, load_prior
+from fieldnav_ros.tuning.prior_file import load_prior
+from fieldnav_ros.tuning.space import SPACE, Prior, Space, dump_prior
 
 SIZE = len(TABLE)
 points = st.lists(st.floats(0, 1), min_size=SIZE, max_size=SIZE)
