@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 import math
+import secrets
 import time
-from collections import Counter
 from collections.abc import Generator, Sequence
 from pathlib import Path
 from typing import Any
@@ -97,9 +97,11 @@ class TunerNode(FieldnavNode):
         self._outcome: Future = Future()
         self._wake: Future = Future()
         self._confirmed = ""
+        self._last_values: tuple[float, ...] = ()
         self._message = "waiting for begin"
         self._floor_mark = time.monotonic()
-        self._attempts: Counter[int] = Counter()
+        # no two requests ever share a name, those of an earlier process on the same ledger included
+        self._token, self._requests = secrets.token_hex(3), 0
         # even a session that was cut off waits for the word: a robot must not start because a process did
         self._wanted = settings["begin"]
         self.create_timer(TICK, self._script.tick)
@@ -177,8 +179,8 @@ class TunerNode(FieldnavNode):
     def _one_episode(self, episode: Episode) -> Generator[Wait, Any, None]:
         if not (yield from self._put(episode.set_id, episode.parameters)):
             return
-        name = f"{episode.id:06d}.{self._attempts[episode.id]}"
-        self._attempts[episode.id] += 1
+        self._requests += 1
+        name = f"{episode.id:06d}.{self._token}.{self._requests}"
         self._running, self._outcome = (name, episode), Future()
         self._announce(name, episode)
         try:
