@@ -60,10 +60,10 @@ class RunEpisode(Payload):
 
 
 class StopEpisode(Payload):
-    """``episode/request``: end the episode now; the robot stops."""
+    """``episode/request``: end whatever episode runs; the robot stops. A word to stop never fails on a name."""
 
     action: Literal["stop"] = "stop"
-    episode: Name = Field(description="the episode to end")
+    episode: Name = Field(description="the episode meant, for the record")
     source: str = Field(default="", max_length=80, description="who asks, for the record")
 
 
@@ -147,10 +147,18 @@ def schemas() -> dict[str, dict[str, Any]]:
             "$schema": "https://json-schema.org/draft/2020-12/schema",
             "$id": f"urn:fieldnav_ros:{name}:1",
             "title": name,
-            **adapter.json_schema(),
+            **_with_action(adapter.json_schema()),
         }
         for name, adapter in _SCHEMAS.items()
     }
+
+
+def _with_action(schema: dict[str, Any]) -> dict[str, Any]:
+    """Require the action, which has a default only for those who make requests in Python."""
+    for part in schema.get("$defs", {}).values():
+        if "action" in part.get("properties", {}):
+            part["required"] = ["action", *part["required"]]
+    return schema
 
 
 def write_schemas(folder: Path) -> None:
