@@ -11,7 +11,9 @@ from pathlib import Path
 from typing import Any
 
 from fieldnav_ros import __version__
+from fieldnav_ros.arguments import number
 from fieldnav_ros.errors import FieldnavError, InputError
+from fieldnav_ros.prepare import command as prepare
 from fieldnav_ros.report import command as report
 
 SAFETY = (
@@ -20,22 +22,6 @@ SAFETY = (
 )
 Summary = dict[str, Any]
 """What a verb has to tell a machine; its key ``ok`` says whether the work succeeded (true where left out)."""
-
-
-def number(name: str, low: float, high: float, kind: Callable[[str], float] = float) -> Callable[[str], Any]:
-    """Return an argument type that takes numbers from ``low`` to ``high`` only."""
-
-    def convert(text: str) -> float:
-        try:
-            value = kind(text)
-        except ValueError:
-            value = float("nan")
-        if not low <= value <= high:
-            noun = "a whole number" if kind is int else "a number"
-            raise InputError.of(name, text, f"{noun} from {low:g} to {high:g}")
-        return value
-
-    return convert
 
 
 def _demo(arguments: argparse.Namespace) -> Summary:
@@ -64,6 +50,7 @@ def build_parser() -> argparse.ArgumentParser:
     demo.add_argument(
         "--seed", type=number("--seed", 0, 2**31, int), default=1, help="seed of the session (default: %(default)s)"
     )
+    prepare.add_arguments(_verb(verbs, "pretune", prepare.run, "tune in simulation; writes a prior for the site"))
     report.add_arguments(_verb(verbs, "report", _report, "one page with pictures from a session's ledger"))
     return parser
 

@@ -84,6 +84,22 @@ class Plant(Frozen):
     pose_rate: Number = Field(default=50.0, ge=5, le=100, description="poses per second")
 
 
+def _more(low: float, high: float, meaning: str) -> Any:
+    return Field(default=(low, high), description=meaning)
+
+
+class PlantRanges(Frozen):
+    """What robots like this one differ by: ranges of departures, added to the plant and kept within its bounds."""
+
+    accel_scale: Range = _more(-0.3, 0.1, "more wheel acceleration, as a share of the nominal one")
+    command_delay: Range = _more(0.0, 0.04, "more delay from command to wheels in s")
+    wheel_mismatch: Range = _more(-0.04, 0.04, "more right over left wheel speed")
+    slip: Range = _more(0.0, 0.1, "more of a step's wheel travel lost at most")
+    pose_noise: Range = _more(0.0, 0.003, "more standard deviation of x and y in m")
+    yaw_noise: Range = _more(0.0, 0.015, "more standard deviation of yaw in rad")
+    pose_loss: Range = _more(0.0, 0.05, "more poses lost, as a share")
+
+
 class Yard(Frozen):
     """A floor with everything an episode on it needs. All lengths in m, angles in rad, times in s."""
 
@@ -101,6 +117,7 @@ class Yard(Frozen):
     reset_time: NonNegative = Field(default=2.0, description="s between two episodes")
     grades: dict[str, Grade] = Field(min_length=1)
     plant: Plant = Plant()
+    plant_ranges: PlantRanges = PlantRanges()
 
     @model_validator(mode="after")
     def _regions_clear_of_walls(self) -> Yard:

@@ -112,7 +112,7 @@ def test_defaults_named_in_comments_are_those_of_the_model(path: Path) -> None:
     own = {line.path: line.comment for line in lines_of(path)}
     for line in lines_of(path):
         field = model_field(line.path)
-        stated = re.search(r"default ([-\w.]+)", line.comment)
+        stated = re.search(r"default (\[[^\]]*\]|[-\w.]+)", line.comment)
         if field is None or (isinstance(field.annotation, type) and issubclass(field.annotation, BaseModel)):
             continue
         if field.is_required():
@@ -123,6 +123,8 @@ def test_defaults_named_in_comments_are_those_of_the_model(path: Path) -> None:
         value = yaml.safe_load(stated[1])
         if value == "any":
             assert field.default == pytest.approx((-3.141592653589793, 3.141592653589793))
+        elif isinstance(field.default, tuple):
+            assert tuple(value) == field.default, line.path
         elif isinstance(field.default, float):
             assert float(value) == pytest.approx(field.default, rel=1e-4), line.path
         else:

@@ -8,6 +8,8 @@ from pydantic import Field
 
 from fieldnav_ros.model import Frozen, Positive
 
+LEAST_EPISODES = 400
+"""With fewer a preparation has no generation for each grade, or no pairs for the verdict."""
 NonNegative = Annotated[float, Field(ge=0)]
 
 

@@ -160,9 +160,7 @@ class Decider:
         batch = state.batch
         if batch is not None:
             between_pairs = len(batch.begun()) == len(batch.compared)
-            if len(batch.compared) < len(batch.opened.layouts) and (
-                not between_pairs or plan.episodes_left >= 2
-            ):
+            if len(batch.compared) < len(batch.opened.layouts) and (not between_pairs or plan.episodes_left >= 2):
                 return None
         pairs = min(state.told.pairs_at_once, plan.episodes_left // 2)
         return self._pairs(state, current, pairs) if pairs else _reached(current, "keep", "floor time used up")

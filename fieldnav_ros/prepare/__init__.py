@@ -1,0 +1,1 @@
+"""Preparing at home: the verb ``fieldnav pretune``, its workers and files. Knows no ROS."""

@@ -1,0 +1,113 @@
+"""Preparing at home: a session whose floor is the batched simulator. Pure; workers and files are the caller's.
+
+A generation is one ``Work``: all its sets on all its layouts, each layout with a plant of its own from the yard's
+ranges, so that what is learnt covers robots like this one. A work can be run whole or in parts, here or elsewhere;
+the outcomes are the same, bit for bit.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from itertools import pairwise
+from typing import NamedTuple
+
+import numpy as np
+
+from fieldnav_ros.errors import InputError
+from fieldnav_ros.guide import MODELS
+from fieldnav_ros.model import Layout, Outcome
+from fieldnav_ros.parameters import ParameterSet
+from fieldnav_ros.tuning.config import LEAST_EPISODES, SessionConfig, Stage
+from fieldnav_ros.tuning.events import Episode, Event
+from fieldnav_ros.tuning.session import Report, Session
+from fieldnav_ros.world import layouts
+from fieldnav_ros.world.batch import BatchResult, simulate
+from fieldnav_ros.world.plants import plant_of
+from fieldnav_ros.yard import Yard
+
+MODEL = MODELS[0]
+POPULATION = 16
+LAYOUTS = (8, 32)
+"""Layouts in a generation: few where the budget is small, so that there are generations enough."""
+GENERATIONS = 75
+VERDICT_SHARE = 0.1
+
+
+class Work(NamedTuple):
+    """Sets to run on layouts of one grade; ``whole`` says how to run it, ``parts`` how to share it out."""
+
+    yard: Yard
+    grade: str
+    time_limit: float
+    layouts: tuple[Layout, ...]
+    sets: tuple[ParameterSet, ...]
+
+    def parts(self, number: int) -> list[Work]:
+        """Return the work in at most ``number`` parts of about the same size: some of the layouts each."""
+        edges = np.linspace(0, len(self.layouts), min(number, len(self.layouts)) + 1).round().astype(int)
+        return [self._replace(layouts=self.layouts[first:last]) for first, last in pairwise(edges)]
+
+    def run(self) -> BatchResult:
+        """Run it in this process."""
+        plants = [plant_of(self.yard, layout) for layout in self.layouts]
+        return simulate(self.yard, self.grade, self.layouts, self.sets, plants, MODEL, self.time_limit)
+
+
+Runner = Callable[[Work], Sequence[BatchResult]]
+"""Runs a work, in parts or whole, and returns the results of its parts in order."""
+
+
+def pretune_config(yard: Yard, episodes: int, seed: int) -> SessionConfig:
+    """Return the configuration for preparing on a yard: its grades from the easiest on, in the yard's order."""
+    if episodes < LEAST_EPISODES:
+        raise InputError.of("number of episodes", episodes, f"at least {LEAST_EPISODES}")
+    stages = [Stage(grade=name, time_limit=grade.time_limit) for name, grade in yard.grades.items()]
+    last = stages[-1]
+    places = min(max(episodes // (GENERATIONS * POPULATION), LAYOUTS[0]), LAYOUTS[1])
+    return SessionConfig(
+        seed=seed, floor_time_s=episodes * last.time_limit, episodes=episodes, grade=last.grade,
+        time_limit=last.time_limit, lead_in=tuple(stages[:-1]), population=POPULATION, layouts=places, control=False,
+        rounds=1, verdict_share=VERDICT_SHARE, pairs_at_once=100, least_pairs=8, reset_guess_s=0.0,
+    )  # fmt: skip
+
+
+def session_on(yard: Yard) -> Session:
+    """Return a session whose layouts come from the yard, each from its own seed."""
+    return Session(lambda grade, seed: layouts.draw(yard, grade, np.random.default_rng(seed)))
+
+
+def pretune(session: Session, yard: Yard, store: Callable[[list[Event]], None], run: Runner) -> None:
+    """Drive a session that has begun to its end: run what is pending, ``store`` the events, apply them, again."""
+    _follow(session, store, session.advance())
+    while episodes := session.pending():
+        work = work_of(yard, session, episodes)
+        outcomes = _outcomes(work, run(work), episodes)
+        _follow(session, store, session.record_all([
+            Report(episode.id, outcome, outcome.time, "simulation") for episode, outcome in zip(episodes, outcomes)
+        ]))  # fmt: skip
+
+
+def work_of(yard: Yard, session: Session, episodes: Sequence[Episode]) -> Work:
+    """Return the work that covers the episodes: every set of theirs on every layout of theirs."""
+    sets = {episode.set_id: episode.parameters for episode in episodes}
+    places = {episode.layout.seed: episode.layout for episode in episodes}
+    stage = session.state.stage
+    return Work(yard, stage.grade, stage.time_limit, tuple(places.values()), tuple(sets.values()))
+
+
+def _outcomes(work: Work, results: Sequence[BatchResult], episodes: Sequence[Episode]) -> list[Outcome]:
+    rows: dict[str, int] = {}
+    for episode in episodes:
+        rows.setdefault(episode.set_id, len(rows))
+    places = [(result, column) for result in results for column in range(result.code.shape[1])]
+    columns = {layout.seed: place for layout, place in zip(work.layouts, places)}
+    found = []
+    for episode in episodes:
+        result, column = columns[episode.layout.seed]
+        found.append(result.outcome(rows[episode.set_id], column))
+    return found
+
+
+def _follow(session: Session, store: Callable[[list[Event]], None], events: list[Event]) -> None:
+    store(events)
+    session.apply(*events)
