@@ -17,6 +17,7 @@ from rclpy.context import Context
 from fieldnav_ros.errors import InputError, WorkError
 from fieldnav_ros.nodes.payloads import TunerStatus
 from fieldnav_ros.nodes.processes import Domain, Processes
+from fieldnav_ros.nodes.tuner_node import SESSION_ENDED
 from fieldnav_ros.nodes.watch import Watch
 from fieldnav_ros.parameters import DEFAULTS
 from fieldnav_ros.resources import config_path
@@ -104,7 +105,7 @@ def _graph(files: Files, floor_time_min: float, seed: int) -> Iterator[tuple[Pro
 def _follow(processes: Processes, watch: Watch, floor_time_min: float) -> None:
     """Begin the session and show its progress until it has ended."""
     end = time.monotonic() + START_LIMIT
-    while not watch.call("begin"):
+    while not watch.call("begin") and not _over(watch):
         processes.check()
         if time.monotonic() > end:
             raise WorkError(f"the tuner could not be begun within {START_LIMIT:g} s")
@@ -117,11 +118,16 @@ def _follow(processes: Processes, watch: Watch, floor_time_min: float) -> None:
             status = watch.status
             if status is not None:
                 show(status)
-                if status.state == "ended" and status.message == "session ended":
+                if _over(watch):
                     show.finish()
                     return
         elif time.monotonic() - heard > SILENCE_LIMIT:
             raise WorkError(f"nothing was heard from the tuner for {SILENCE_LIMIT:g} s")
+
+
+def _over(watch: Watch) -> bool:
+    """Tell whether the session has ended and the champion has been put back in service."""
+    return watch.status is not None and watch.status.state == "ended" and watch.status.message == SESSION_ENDED
 
 
 class Progress:
@@ -160,7 +166,9 @@ class Progress:
 def _result(files: Files, seed: int, seconds: float) -> dict[str, Any]:
     session = Session()
     with Ledger.read(files.ledger) as ledger:
-        session.apply(*ledger.events())
+        events = list(ledger.events())
+    session.apply(*events)
+    reason = next(event.reason for event in reversed(events) if event.kind == "session_ended")
     champion = session.champion
     yard = load_yard(config_path("yards/parcel_yard.yaml"))
     default, tuned = unseen_costs(yard, GRADE, [DEFAULTS, champion.parameters], UNSEEN_LAYOUTS, seed)
@@ -168,7 +176,7 @@ def _result(files: Files, seed: int, seconds: float) -> dict[str, Any]:
     episodes = int(session.summary()["episodes_done"] or 0)
     error = float((tuned - default).std(ddof=1) / math.sqrt(len(tuned)))
     print(
-        f"\n{episodes} episodes in {seconds:.0f} s. Champion: {champion.set_id}.\n"
+        f"\n{episodes} episodes in {seconds:.0f} s. Champion: {champion.set_id} ({reason}).\n"
         f"On {UNSEEN_LAYOUTS} layouts the search never saw the mean cost went from {default.mean():.2f} s with the "
         f"defaults\nto {tuned.mean():.2f} s with the champion ({change:+.0%}; standard error of the difference "
         f"{error:.2f} s).\n\n"

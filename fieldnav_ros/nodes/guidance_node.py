@@ -154,8 +154,8 @@ class GuidanceNode(FieldnavNode):
         request = self.decoded(decode_request, message)
         if isinstance(request, RunEpisode):
             self._begin(request)
-        elif request is not None:
-            self._end(request.episode, "stopped by request")
+        elif request is not None and self.pilot.episode is not None:
+            self._end(self.pilot.episode, f"stopped by {request.source or 'request'}")
 
     def on_outcome(self, message: String) -> None:
         """End the episode that the outcome is about."""
@@ -173,6 +173,8 @@ class GuidanceNode(FieldnavNode):
             self._stop(self.pilot.refuse(Halt("bad_goal", reason)))
             return
         self.pilot.start_episode(request.episode, request.layout.goal, request.time_limit)
+        self._order = None
+        self._send(0.0, 0.0, self.get_clock().now().nanoseconds)  # an episode starts from rest: say so to the base
 
     def _end(self, episode: str, how: str) -> None:
         if self.pilot.episode != episode:

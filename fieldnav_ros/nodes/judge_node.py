@@ -103,7 +103,7 @@ class JudgeNode(FieldnavNode):
             return
         running = self._episode.episode if self._episode else ""
         if not isinstance(request, RunEpisode):
-            if request.episode == running:
+            if running:
                 self._drop("stopped by request, not judged")
             return
         if request.episode not in (running, self._ended):

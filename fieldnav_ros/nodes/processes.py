@@ -79,6 +79,13 @@ class Processes:
             if child.poll() is not None:
                 raise WorkError(f"{node} ended with code {child.returncode}: {_last_words(log)}")
 
+    def kill(self, node: str, number: int) -> None:
+        """Send one node a signal and wait for its end."""
+        child, log = self._children.pop(node)
+        child.send_signal(number)
+        child.wait(GRACE)
+        log.close()
+
     def stop(self) -> None:
         """End all: SIGINT first, SIGKILL for whoever has not gone in time."""
         for child, _ in self._children.values():

@@ -121,8 +121,7 @@ class SimulatorNode(FieldnavNode):
             return
         running = self.episode.episode if self.episode else ""
         if not isinstance(request, RunEpisode):
-            if request.episode == running:
-                self.end("stopped by request")
+            self.end("stopped by request")
             return
         if request.episode in (running, self._ended):
             return  # a repeated message

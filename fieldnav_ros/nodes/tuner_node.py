@@ -47,6 +47,8 @@ PATIENCE = 1.0
 CALL_LIMIT = 1.0
 """Seconds within which a match call is answered, whatever the answer."""
 TICK = 0.05
+SESSION_ENDED = "session ended"
+"""Message of the status when nothing more will be run and the champion is in service."""
 LARGEST_EVIDENCE = 1e12
 FROM_SUMMARY = (
     "phase", "episodes_done", "episodes_left", "champion", "champion_cost", "challenger", "challenger_cost",
@@ -159,7 +161,7 @@ class TunerNode(FieldnavNode):
                 yield from self._one_episode(episodes[0])
                 continue
             yield from self._in_service()
-            self._message = "session ended" if self.session.ended else "champion in service"
+            self._message = SESSION_ENDED if self.session.ended else "champion in service"
             self._publish_status()
             self._wake = Future()
             yield Wait(self._wake)
