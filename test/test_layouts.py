@@ -122,10 +122,12 @@ def installed_by_pip(name: str, source: Path, prefix: Path) -> Layout:
         run(*pip, "install", "--no-deps", "--no-index", "--quiet", wheel, folder=prefix)
     else:
         run(*pip, "install", *options, "--editable", source, folder=prefix, environment=lent)
+    # By a .pth file and not by PYTHONPATH: what lies there comes last, and the ways in which fieldnav_ros itself may
+    # be installed there do not come at all.
     libraries = [path for path in sys.path if path.endswith(("site-packages", "dist-packages"))]
-    path = os.pathsep.join([*libraries, os.environ.get("PYTHONPATH", "")])
-    environment = {**os.environ, "PYTHONPATH": path, "VIRTUAL_ENV": str(prefix)}
-    return Layout(name, source, prefix, python, environment, prefix / "bin")
+    (site_packages,) = prefix.glob("lib/python*/site-packages")
+    (site_packages / "borrowed.pth").write_text("\n".join(libraries) + "\n")
+    return Layout(name, source, prefix, python, {**os.environ, "VIRTUAL_ENV": str(prefix)}, prefix / "bin")
 
 
 def lend_setuptools(folder: Path) -> Path:
