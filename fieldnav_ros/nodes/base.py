@@ -122,7 +122,7 @@ def incoming_qos(settings: Mapping[str, Any]) -> QoSProfile:
     """Return the QoS of pose and obstacles as ``match_stamps`` and ``reliable`` ask for it."""
     if settings["match_stamps"]:
         return DEEP
-    return DEEP if settings["reliable"] else SENSOR
+    return RELIABLE if settings["reliable"] else SENSOR
 
 
 def yard_of(path: str) -> Yard:
