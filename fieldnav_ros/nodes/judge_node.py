@@ -56,7 +56,7 @@ SETTINGS: tuple[Setting, ...] = (
     MATCH_STAMPS,
     RELIABLE_INPUT,
 )
-EARLY = 200
+EARLY = 4000
 """Messages from before a request that lockstep keeps."""
 
 
