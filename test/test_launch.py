@@ -88,6 +88,13 @@ def test_files_named_are_shipped(path: Path) -> None:
         assert "$(find-pkg-share" not in value.replace(SHARED, "")
 
 
+def test_lockstep_has_the_last_word_in_simulation() -> None:
+    """Later files win (docs.ros.org, "Passing ROS arguments to nodes"), and a file given by the user may hold anything."""
+    for node in tree(FOLDER / "sim.launch.xml").iter("node"):
+        files = [param.get("from") for param in node.iter("param") if param.get("from")]
+        assert files[-1] == SHARED + "config/lockstep.yaml"
+
+
 def test_no_simulator_starts_beside_real_hardware() -> None:
     assert "simulator_node" not in {node.get("exec") for node in tree(FOLDER / "hardware.launch.xml").iter("node")}
 
