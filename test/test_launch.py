@@ -89,7 +89,7 @@ def test_files_named_are_shipped(path: Path) -> None:
 
 
 def test_lockstep_has_the_last_word_in_simulation() -> None:
-    """Later files win (docs.ros.org, "Passing ROS arguments to nodes"), and a file given by the user may hold anything."""
+    """Later files win (docs.ros.org, "Passing ROS arguments to nodes"), and a user's file may hold anything."""
     for node in tree(FOLDER / "sim.launch.xml").iter("node"):
         files = [param.get("from") for param in node.iter("param") if param.get("from")]
         assert files[-1] == SHARED + "config/lockstep.yaml"
