@@ -39,7 +39,7 @@ def drive(error: Any, bend: Any, distance: Any, numbers: Numbers, robot: Robot) 
     speed = np.minimum(np.minimum(by_wheels, by_side), numbers.arrival_gain * distance)
     speed = np.maximum(speed, 0.0)
     most = 2.0 * robot.wheel_speed / robot.track
-    turn = np.clip(bend * speed + np.copysign(steer, error), -most, most)
+    turn = np.minimum(np.maximum(bend * speed + np.copysign(steer, error), -most), most)
     return speed, turn
 
 
@@ -53,4 +53,4 @@ def limit_wheels(speed: Any, turn: Any, robot: Robot) -> tuple[Any, Any]:
 
 def limit_change(wheels: Any, before: Any, most: Any) -> Any:
     """Return wheel speeds (m/s) that differ from those before by no more than ``most`` (m/s)."""
-    return before + np.clip(wheels - before, -most, most)
+    return before + np.minimum(np.maximum(wheels - before, -most), most)

@@ -11,15 +11,20 @@ import numpy as np
 
 from fieldnav_ros.drive import drive, limit_change, limit_wheels, wrap
 from fieldnav_ros.field.avoidance import Obstacles
-from fieldnav_ros.field.heading import published_vector
+from fieldnav_ros.field.foresight import Course, Robots
+from fieldnav_ros.field.heading import Goal, Habit, guidance_course, published_vector, waits
 from fieldnav_ros.model import Robot
 from fieldnav_ros.parameters import FloatArray, Numbers
+from fieldnav_ros.pending import Pending
 from fieldnav_ros.yard import Floor
 
-Model = Literal["published"]
+Model = Literal["foresight", "published"]
 MODELS: tuple[str, ...] = get_args(Model)
+DEFAULT_MODEL: Model = "foresight"
 PROBE = 0.01
-"""Step in m by which the bend of the field along the robot's heading is measured."""
+"""Step in m by which the bend of the published field along the robot's heading is measured."""
+FARTHEST = 1e6
+"""Places and speeds beyond this (m, m/s) are taken as this, so that squares of finite input stay finite."""
 
 
 class Senses(NamedTuple):
@@ -35,19 +40,33 @@ class Senses(NamedTuple):
 
 
 class Memory(NamedTuple):
-    """What guidance keeps from one moment to the next, each (N,): the wheel speeds last commanded (m/s)."""
+    """What guidance keeps from one moment to the next, each with N as its last axis.
+
+    The wheel speeds last commanded (m/s); the habits of the field (see ``heading.Habit``); and the commands that may
+    still be on their way, (K, N): wheel speeds and the seconds each was the newest. K is 0 without a command delay.
+    """
 
     left: FloatArray
     right: FloatArray
+    side: FloatArray
+    course_x: FloatArray
+    course_y: FloatArray
+    waited: FloatArray
+    sent_left: FloatArray
+    sent_right: FloatArray
+    sent_for: FloatArray
 
     @classmethod
-    def start(cls, rows: int) -> Memory:
-        """Return the memory of ``rows`` robots that stand still."""
-        return cls(np.zeros(rows), np.zeros(rows))
+    def start(cls, rows: int, slots: int = 0) -> Memory:
+        """Return the memory of ``rows`` robots that stand still and remember ``slots`` commands.
+
+        ``pending.slots(command_delay, dt)`` says how many are needed.
+        """
+        return cls(*(np.zeros(rows) for _ in range(6)), *(np.zeros((slots, rows)) for _ in range(3)))
 
     def take(self, rows: Any) -> Memory:
         """Return the memory of the rows that an index or mask picks."""
-        return Memory(*(part[rows] for part in self))
+        return Memory(*(part[..., rows] for part in self))
 
 
 class Advice(NamedTuple):
@@ -65,29 +84,72 @@ def guide(
     robot: Robot,
     floor: Floor | None,
     memory: Memory,
-    dt: float,
-    model: str = "published",
+    dt: Any,
+    model: str = DEFAULT_MODEL,
+    command_delay: float = 0.0,
 ) -> Advice:
     """Return heading and command for each row; wheel speed and acceleration limits always hold.
 
-    dt is the time in s since the memory was made; ``floor`` gives walls to models that heed them.
+    ``dt`` is the time in s since the memory was made, a float or (N,); ``floor`` gives walls to models that heed
+    them. With a ``command_delay`` (s) the advice is for the moment when the command reaches the wheels: the pose is
+    carried on by the commands still on their way, obstacles by their velocity; this holds for the default model.
+    Any finite input gives finite advice.
     """
-    goal = (senses.goal_x, senses.goal_y, np.cos(senses.goal_yaw), np.sin(senses.goal_yaw))
-    speed = 0.5 * (memory.left + memory.right)
-    cos_yaw, sin_yaw = np.cos(senses.yaw), np.sin(senses.yaw)
-    velocity_x, velocity_y = speed * cos_yaw, speed * sin_yaw
-
-    def field(x: Any, y: Any) -> tuple[Any, Any]:
-        return published_vector(x, y, velocity_x, velocity_y, goal, senses.obstacles, numbers)
-
-    here_x, here_y = field(senses.x, senses.y)
-    next_x, next_y = field(senses.x + PROBE * cos_yaw, senses.y + PROBE * sin_yaw)
-    heading = np.arctan2(here_y, here_x)
-    turned = np.arctan2(here_x * next_y - here_y * next_x, here_x * next_x + here_y * next_y)
-    error = wrap(heading - senses.yaw)
-    distance = np.hypot(senses.x - senses.goal_x, senses.y - senses.goal_y)
-    v, w = drive(error, turned / PROBE, distance, numbers, robot)
+    x, y, goal_x, goal_y = (_near(part) for part in (senses.x, senses.y, senses.goal_x, senses.goal_y))
+    obstacles = Obstacles(*(_near(part) for part in senses.obstacles))
+    goal = Goal(goal_x, goal_y, np.cos(senses.goal_yaw), np.sin(senses.goal_yaw))
+    yaw = wrap(senses.yaw)
+    sent = Pending(memory.sent_left, memory.sent_right, memory.sent_for)
+    habit = Habit(memory.side, memory.course_x, memory.course_y, memory.waited)
+    if model == "published":
+        heading, v, w = _published(Robots(x, y, yaw, memory.left, memory.right, _apart(x, y, goal)),
+                                   goal, obstacles, numbers, robot)  # fmt: skip
+    else:
+        if command_delay > 0.0:
+            sent = sent.passed(dt)
+            x, y, yaw = sent.carry_on(x, y, yaw, command_delay, robot.track)
+            obstacles = obstacles._replace(
+                x=obstacles.x + command_delay * obstacles.vx, y=obstacles.y + command_delay * obstacles.vy
+            )
+        robots = Robots(x, y, yaw, memory.left, memory.right, _apart(x, y, goal))
+        course, side = guidance_course(robots, goal, obstacles, numbers, robot, floor, habit)
+        heading, v, w = _follow(course, robots, numbers, robot)
+        habit = Habit(side, np.cos(heading), np.sin(heading), habit.waited)
     left, right = limit_wheels(v, w, robot)
     most = robot.wheel_accel * dt
     left, right = limit_change(left, memory.left, most), limit_change(right, memory.right, most)
-    return Advice(heading, 0.5 * (left + right), (right - left) / robot.track, Memory(left, right))
+    habit = habit._replace(waited=waits(habit.waited, left, right, dt))
+    new = Memory(left, right, *habit, *sent.add(left, right))
+    return Advice(heading, 0.5 * (left + right), (right - left) / robot.track, new)
+
+
+def _near(part: Any) -> Any:
+    return np.minimum(np.maximum(part, -FARTHEST), FARTHEST)
+
+
+def _apart(x: Any, y: Any, goal: Goal) -> Any:
+    dx, dy = x - goal.x, y - goal.y
+    return np.sqrt(dx * dx + dy * dy)
+
+
+def _follow(course: Course, robots: Robots, numbers: Numbers, robot: Robot) -> tuple[Any, Any, Any]:
+    error = wrap(course.facing - robots.yaw)
+    v, w = drive(error, course.bend, robots.distance, numbers, robot)
+    return course.facing, v * course.pace, w
+
+
+def _published(
+    robots: Robots, goal: Goal, obstacles: Obstacles, numbers: Numbers, robot: Robot
+) -> tuple[Any, Any, Any]:
+    speed = 0.5 * (robots.left + robots.right)
+    cos_yaw, sin_yaw = np.cos(robots.yaw), np.sin(robots.yaw)
+
+    def field(x: Any, y: Any) -> tuple[Any, Any]:
+        return published_vector(x, y, speed * cos_yaw, speed * sin_yaw, goal, obstacles, numbers)
+
+    here_x, here_y = field(robots.x, robots.y)
+    next_x, next_y = field(robots.x + PROBE * cos_yaw, robots.y + PROBE * sin_yaw)
+    heading = np.arctan2(here_y, here_x)
+    turned = np.arctan2(here_x * next_y - here_y * next_x, here_x * next_x + here_y * next_y)
+    v, w = drive(wrap(heading - robots.yaw), turned / PROBE, robots.distance, numbers, robot)
+    return heading, v, w

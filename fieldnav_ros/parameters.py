@@ -58,34 +58,34 @@ class ParameterSet(Frozen):
     )  # fmt: skip
     turn_softness: Number = _number(
         "field", "K_r", "m", 0.10, 0.005, 0.50, "log",
-        "how gently the spirals bend towards those circles",
+        "how gently the way in bends towards those circles",
     )  # fmt: skip
     motion_lead: Number = _number(
-        "field", "K_o", "s", 0.10, 0.0, 0.60, "linear",
-        "how far ahead an obstacle's relative motion shifts it",
+        "field", "K_o", "s", 0.30, 0.0, 0.60, "linear",
+        "how far ahead the robot's and the obstacles' motion is looked at",
     )  # fmt: skip
     guard_distance: Number = _number(
         "field", "d_min", "m", 0.16, 0.08, 0.35, "log",
-        "inside it, only avoidance counts",
+        "centre distance wanted from an obstacle of the robot's size; others and walls by their own",
     )  # fmt: skip
     guard_fade: Number = _number(
-        "field", "delta", "m", 0.10, 0.01, 0.30, "log",
-        "width of the Gaussian hand-over from avoidance to approach",
+        "field", "delta", "m", 0.05, 0.01, 0.30, "log",
+        "half the width over which the wish for that distance fades out",
     )  # fmt: skip
     sidestep: Number = _number(
-        "field", "own", "rad", 0.30, 0.0, 1.5, "linear",
-        "turns the repulsion towards the side that leads on to the goal",
+        "field", "own", "rad", 0.40, 0.0, 1.5, "linear",
+        "how far to either side ways past an obstacle are tried: once, twice and four times this",
     )  # fmt: skip
     steer_gain: Number = _number(
         "drive", "K_w", "s^-1 rad^-1/2", 5.0, 1.0, 20.0, "log",
         "turn rate per square root of heading error",
     )  # fmt: skip
     arrival_gain: Number = _number(
-        "drive", "K_p", "s^-1", 3.0, 1.0, 10.0, "log",
+        "drive", "K_p", "s^-1", 3.0, 1.0, 40.0, "log",
         "slows down with the distance left",
     )  # fmt: skip
     lateral_accel: Number = _number(
-        "drive", "R_m", "m s^-2", 1.5, 0.3, 6.0, "log",
+        "drive", "R_m", "m s^-2", 1.5, 0.3, 12.0, "log",
         "bounds speed times turn rate",
     )  # fmt: skip
 

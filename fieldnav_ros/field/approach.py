@@ -1,7 +1,12 @@
-"""The approach field: two spirals about turning circles that meet in the goal heading.
+"""Approach: headings that lead round a turning circle into the goal heading.
 
-Source: Kim, Kim and Kwon, IEEE Trans. SMC-B 31(3), 2001 (univector field);
-Lim, Choi, Kim and Kim, IFAC World Congress 2008. Goal frame: the goal at the origin, its heading along +x.
+Goal frame everywhere here: the goal at the origin, its heading along +x.
+
+Two kinds. The published field (``approach_heading``): two spirals weighted across the strip |y| < d_e. Source:
+Kim, Kim and Kwon, IEEE Trans. SMC-B 31(3), 2001; Lim, Choi, Kim and Kim, IFAC World Congress 2008. The default
+(``circle_course``): one circle at a time, the one with the shorter way, and tangents to it instead of spirals;
+straight line and arc are the shortest way of bounded curvature (Dubins, Amer. J. Math. 79, 1957) from a heading
+that may still be turned to. One circle at a time never cancels; the strip of the published weighting does.
 """
 
 from __future__ import annotations
@@ -12,6 +17,11 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 HALF_TURN = np.pi / 2
+FULL_TURN = 2 * np.pi
+OVERSHOT = 0.3
+"""Arcs within this angle (rad) of a full turn are none: the robot is past the tangent point by a hair."""
+SHARPEST = 30.0
+"""Largest slope (rad/m) of the tangent field towards its circle; at the circle itself it has none."""
 
 
 def spiral_vector(x: Any, y: Any, side: int, turn_radius: Any, turn_softness: Any) -> tuple[Any, Any]:
@@ -54,3 +64,42 @@ def approach_heading(x: ArrayLike, y: ArrayLike, turn_radius: ArrayLike, turn_so
     along, across = approach_vector(np.asarray(x, float), np.asarray(y, float),
                                     np.asarray(turn_radius, float), np.asarray(turn_softness, float))  # fmt: skip
     return np.arctan2(across, along)
+
+
+def way_left(x: Any, y: Any, side: Any, turn_radius: Any) -> Any:
+    """Return the length (m) of the way to the goal: straight to the circle of that side, then along it.
+
+    ``side`` is +1 for the anticlockwise circle centred at (0, d_e), -1 for the clockwise one. Inside the circle
+    the straight part is 0. Turning at the start is not counted. Dubins 1957 for the words straight and arc.
+    """
+    off = y - side * turn_radius
+    rho = np.sqrt(x * x + off * off)
+    straight = np.sqrt(np.maximum(rho * rho - turn_radius * turn_radius, 0.0))
+    leans = np.arcsin(np.minimum(turn_radius / np.maximum(rho, 1e-9), 1.0))
+    # the heading of the straight part is theta + side (pi - leans); what is left to turn from there to 0
+    turns = (-side * np.arctan2(off, x) - np.pi + leans) / FULL_TURN
+    arc = FULL_TURN * (turns - np.floor(turns))
+    return straight + turn_radius * np.where(arc > FULL_TURN - OVERSHOT, 0.0, arc)
+
+
+def circle_course(
+    x: Any, y: Any, side: Any, turn_radius: Any, turn_softness: Any, along: Any, across: Any
+) -> tuple[Any, Any]:
+    """Return heading (rad, any multiple of 2 pi) of the default field about the circle of ``side``, and its bend.
+
+    Outside the circle the heading is theta + side (pi - asin q), q = (d_e + K_r)/(rho + K_r): for K_r = 0 the
+    tangent to the circle, and the gentler a bend towards it the larger K_r is. Inside it is the published one.
+    The bend (rad/m) is the change of the heading per metre along the direction (``along``, ``across``), a unit
+    vector: what the drive law feeds forward. Lengths in m, goal frame.
+    """
+    off = y - side * turn_radius
+    rho = np.maximum(np.sqrt(x * x + off * off), 1e-6)
+    outside = rho > turn_radius
+    q = np.minimum((turn_radius + turn_softness) / (rho + turn_softness), 0.9999)
+    root = np.sqrt(rho / turn_radius)
+    angle = np.where(outside, np.pi - np.arcsin(q), HALF_TURN * root)
+    steep = np.minimum(q / ((rho + turn_softness) * np.sqrt(1.0 - q * q)), SHARPEST)
+    slope = np.where(outside, steep, 0.5 * HALF_TURN / (root * turn_radius))
+    radial = (x * along + off * across) / rho
+    bend = (x * across - off * along) / (rho * rho) + side * slope * radial
+    return np.arctan2(off, x) + side * angle, bend

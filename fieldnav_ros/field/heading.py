@@ -2,41 +2,151 @@
 
 from __future__ import annotations
 
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 
-from fieldnav_ros.field.approach import approach_vector
+from fieldnav_ros.drive import wrap
+from fieldnav_ros.field.approach import approach_vector, circle_course, way_left
 from fieldnav_ros.field.avoidance import Obstacles, guard_weight, nearest_repulsion
+from fieldnav_ros.field.foresight import Ahead, Course, Robots, look_ahead
+from fieldnav_ros.model import Robot
 from fieldnav_ros.parameters import Numbers
+from fieldnav_ros.yard import Floor
+
+SIDE_STAYS = 0.02
+"""Metres by which the other turning circle must be nearer before the robot changes over to it."""
+CROWDED = 1.5
+"""What a second inside a guard zone costs, in seconds of way."""
+TOUCHED = 10.0
+"""What a touch costs, in seconds of way."""
+COURSE_STAYS = 0.08
+"""What the reverse of the last course costs more than the same, in half seconds of way."""
+WAITED = 4.0
+"""How much more the course stays for each second waited."""
+PATIENCE = 2.0
+"""Longest time waited (s) that counts."""
+STANDS = 0.15
+"""Mean wheel speed (m/s) below which the robot counts as waiting."""
+
+# steps of ``sidestep`` to both sides at full pace and the wanted course slowly; then standing, and straight back
+_STEPS = np.array([1.0, -1.0, 2.0, -2.0, 4.0, -4.0, 0.0])[:, None]
+_PACES = np.array([*[1.0] * len(_STEPS), 0.4, 0.0, -1.0])[:, None]  # the wanted course first
+_STANDING = len(_PACES) - 2
 
 
-def to_goal_frame(x: Any, y: Any, goal_x: Any, goal_y: Any, cos_goal: Any, sin_goal: Any) -> tuple[Any, Any]:
-    """Return floor coordinates (m) in the frame of the goal, whose heading is its x axis."""
-    dx, dy = x - goal_x, y - goal_y
-    return cos_goal * dx + sin_goal * dy, cos_goal * dy - sin_goal * dx
+class Goal(NamedTuple):
+    """Where to arrive: x, y (m), cosine and sine of the heading, and the heading (rad), each (N,)."""
+
+    x: Any
+    y: Any
+    cos: Any
+    sin: Any
+
+    def frame(self, x: Any, y: Any) -> tuple[Any, Any]:
+        """Return floor coordinates (m) in the frame of the goal, whose heading is its x axis."""
+        dx, dy = x - self.x, y - self.y
+        return self.cos * dx + self.sin * dy, self.cos * dy - self.sin * dx
+
+    def take(self, rows: Any) -> Goal:
+        """Return the goals that an index or mask picks."""
+        return Goal(*(part[rows] for part in self))
+
+
+class Habit(NamedTuple):
+    """What keeps the robot from dithering, each (N,): side of the circle, last course (unit vector), time waited (s).
+
+    ``side`` is +1, -1, or 0 where none has been taken yet; the course is (0, 0) before the first.
+    """
+
+    side: Any
+    course_x: Any
+    course_y: Any
+    waited: Any
+
+    def take(self, rows: Any) -> Habit:
+        """Return the habits of the rows that an index or mask picks."""
+        return Habit(*(part[rows] for part in self))
+
+
+def guidance_course(
+    robots: Robots, goal: Goal, obstacles: Obstacles, numbers: Numbers, robot: Robot, floor: Floor | None, habit: Habit
+) -> tuple[Course, Any]:
+    """Return the course of the default field for each row, and the side of the turning circle it leads round, (N,).
+
+    It differs from the published composition in that it never adds two fields up. The approach leads round one
+    circle, the one with the shorter way, and changes over only for a gain; avoidance drives the approach ahead in
+    thought and, only where that meets guard zones, compares it with courses turned to both sides, slower, standing
+    and backing, by the way left at the end and the crowding and touching until then. All obstacles and walls count.
+    """
+    x, y = goal.frame(robots.x, robots.y)
+    left, right = (way_left(x, y, side, numbers.turn_radius) for side in (1.0, -1.0))
+    side = np.where(left - right < SIDE_STAYS * habit.side, 1.0, -1.0)
+    cos_yaw, sin_yaw = np.cos(robots.yaw), np.sin(robots.yaw)
+    along, across = goal.cos * cos_yaw + goal.sin * sin_yaw, goal.cos * sin_yaw - goal.sin * cos_yaw
+    heading, bend = circle_course(x, y, side, numbers.turn_radius, numbers.turn_softness, along, across)
+    facing = wrap(heading + np.arctan2(goal.sin, goal.cos))
+    course = Course(facing, bend, np.ones_like(facing))
+    wanted = Course(facing[None], bend[None], 1.0)
+    ahead = look_ahead(robots, wanted, obstacles, numbers, robot, floor)
+    troubled = np.flatnonzero(ahead.crowding[0] + ahead.touching[0] > 0.0)
+    if troubled.size:
+        _resolve(
+            course, troubled, robots.take(troubled), goal.take(troubled), obstacles.take(troubled),
+            Numbers(*(part[troubled] if np.ndim(part) else part for part in numbers)), robot, floor,
+            habit.take(troubled), side[troubled], Ahead(*(part[:, troubled] for part in ahead)),
+        )  # fmt: skip
+    return course, side
+
+
+def _resolve(
+    course: Course,
+    rows: Any,
+    robots: Robots,
+    goal: Goal,
+    obstacles: Obstacles,
+    numbers: Numbers,
+    robot: Robot,
+    floor: Floor | None,
+    habit: Habit,
+    side: Any,
+    ahead: Ahead,
+) -> None:
+    """Put the best of a few courses in place of the wanted one, for the rows where that one meets trouble."""
+    facing = course.facing[rows]
+    others = facing + numbers.sidestep * _STEPS
+    candidates = np.concatenate([others, robots.yaw[None], robots.yaw[None]])
+    tried = look_ahead(robots, Course(candidates, 0.0, _PACES[1:]), obstacles, numbers, robot, floor)
+    facings = np.concatenate([facing[None], candidates])
+    ends = Ahead(*(np.concatenate(parts) for parts in zip(ahead, tried)))
+    length = way_left(*goal.frame(ends.x, ends.y), side, numbers.turn_radius)
+    same = habit.course_x * np.cos(facings) + habit.course_y * np.sin(facings)
+    price = length / robot.wheel_speed + CROWDED * ends.crowding + TOUCHED * ends.touching
+    price -= COURSE_STAYS * (1.0 + WAITED * habit.waited) * same
+    price[_STANDING] += habit.waited
+    best = np.argmin(price, axis=0)
+    course.facing[rows] = np.take_along_axis(facings, best[None], 0)[0]
+    course.bend[rows] = np.where(best == 0, course.bend[rows], 0.0)
+    course.pace[rows] = _PACES[best, 0]
+
+
+def waits(waited: Any, left: Any, right: Any, dt: Any) -> Any:
+    """Return the time waited (s) after ``dt`` more seconds with these wheel speeds (m/s); it fades half as fast."""
+    standing = np.abs(left + right) < 2.0 * STANDS
+    return np.minimum(np.maximum(waited + np.where(standing, dt, -0.5 * dt), 0.0), PATIENCE)
 
 
 def published_vector(
-    x: Any,
-    y: Any,
-    velocity_x: Any,
-    velocity_y: Any,
-    goal: tuple[Any, Any, Any, Any],
-    obstacles: Obstacles,
-    numbers: Numbers,
+    x: Any, y: Any, velocity_x: Any, velocity_y: Any, goal: Goal, obstacles: Obstacles, numbers: Numbers
 ) -> tuple[Any, Any]:
     """Return the published composition as a vector in the floor's frame, not normalised, each (N,).
 
-    ``goal`` is x, y (m), cosine and sine of the goal heading. Avoidance of the nearest obstacle alone
-    counts inside d_min and fades outside it (Kim et al. 2001; Lim et al. 2008). ``sidestep`` is no part
-    of it and has no effect here.
+    Avoidance of the nearest obstacle alone counts inside d_min and fades outside it (Kim et al. 2001; Lim et
+    al. 2008). ``sidestep`` is no part of it and has no effect here.
     """
-    goal_x, goal_y, cos_goal, sin_goal = goal
-    along, across = to_goal_frame(x, y, goal_x, goal_y, cos_goal, sin_goal)
-    in_goal_x, in_goal_y = approach_vector(along, across, numbers.turn_radius, numbers.turn_softness)
-    field_x = cos_goal * in_goal_x - sin_goal * in_goal_y
-    field_y = sin_goal * in_goal_x + cos_goal * in_goal_y
+    in_goal_x, in_goal_y = approach_vector(*goal.frame(x, y), numbers.turn_radius, numbers.turn_softness)
+    field_x = goal.cos * in_goal_x - goal.sin * in_goal_y
+    field_y = goal.sin * in_goal_x + goal.cos * in_goal_y
     if obstacles.x.shape[0] == 0:
         return field_x, field_y
     away_x, away_y, distance = nearest_repulsion(x, y, velocity_x, velocity_y, obstacles, numbers.motion_lead)

@@ -9,9 +9,10 @@ from typing import Any
 import numpy as np
 
 from fieldnav_ros.errors import InputError
-from fieldnav_ros.guide import Memory, Senses, guide
+from fieldnav_ros.guide import DEFAULT_MODEL, Memory, Senses, guide
 from fieldnav_ros.model import KINDS, Layout, Outcome, OutcomeKind
 from fieldnav_ros.parameters import FloatArray, Numbers, ParameterSet, stack
+from fieldnav_ros.pending import slots
 from fieldnav_ros.world import carts as others
 from fieldnav_ros.world.judge import RUNNING, Track, look
 from fieldnav_ros.world.noise import Tapes, is_quiet, record
@@ -56,14 +57,16 @@ def simulate(
     layouts: Sequence[Layout],
     sets: Sequence[ParameterSet],
     plants: Sequence[Plant] | None = None,
-    model: str = "published",
+    model: str = DEFAULT_MODEL,
     time_limit: float | None = None,
+    command_delay: float = 0.0,
 ) -> BatchResult:
     """Run every set on every layout.
 
     ``plants`` gives each layout a plant of its own (default: the yard's for all); ``time_limit`` (s, up to
-    600) overrides the grade's. ``steps`` of the result counts robot-steps of STEP seconds. A row's result does
-    not depend on the others. Rows of one pose rate are stepped together, so few different rates run faster.
+    600) overrides the grade's; ``command_delay`` (s) is what guidance is told of the plants' delays. ``steps`` of
+    the result counts robot-steps of STEP seconds. A row's result does not depend on the others. Rows of one pose
+    rate are stepped together, so few different rates run faster.
     Raises InputError where there is no layout or set, or where plants and layouts differ in number.
     """
     count = len(layouts)
@@ -79,7 +82,7 @@ def simulate(
     for rows in _chunks(np.array(alike)[column], most):
         run = _Run(
             yard, [layouts[i] for i in column[rows]], [per_layout[i] for i in column[rows]],
-            Numbers(*(part[rows] for part in numbers)), model, limit,
+            Numbers(*(part[rows] for part in numbers)), model, limit, command_delay,
         )  # fmt: skip
         code[rows], time[rows], clearance[rows], taken = run.finish()
         steps += taken
@@ -113,9 +116,10 @@ class _Run:
     """One chunk of rows from start to end; finished rows leave it now and then."""
 
     def __init__(
-        self, yard: Yard, layouts: list[Layout], plants: list[Plant], numbers: Numbers, model: str, limit: float
-    ) -> None:
-        self.yard, self.model, self.numbers = yard, model, numbers
+        self, yard: Yard, layouts: list[Layout], plants: list[Plant], numbers: Numbers, model: str, limit: float,
+        command_delay: float,
+    ) -> None:  # fmt: skip
+        self.yard, self.model, self.numbers, self.command_delay = yard, model, numbers, command_delay
         self.limit_steps = max(1, round(limit / STEP))
         rows = len(layouts)
         self.motion = Motion.at_rest(*_poses([layout.start for layout in layouts]))
@@ -126,7 +130,8 @@ class _Run:
         quiet = all(is_quiet(plant) for plant in plants)
         self.tapes: Tapes | None = None if quiet else record(layouts, plants, self.limit_steps)
         self.poses_per_step = plants[0].pose_rate * STEP
-        self.memory = Memory.start(rows)
+        self.memory = Memory.start(rows, slots(command_delay, STEP * int(1.0 / self.poses_per_step + 1e-9)))
+        self.advised = np.full(rows, -1.0 / self.poses_per_step)  # the step of the last pose that came
         self.v, self.w = np.zeros(rows), np.zeros(rows)
         self.index = np.arange(rows)
         self.code = np.full(rows, OutcomeKind.TIMEOUT.code)
@@ -154,16 +159,17 @@ class _Run:
         x, y, yaw = motion.x, motion.y, motion.yaw
         if tapes is not None:
             x, y, yaw = x + tapes.x[number], y + tapes.y[number], yaw + tapes.yaw[number]
-        dt = 1.0 / (self.poses_per_step / STEP)
         advice = guide(
             Senses(x, y, yaw, *self.goal, self.carts), self.numbers, self.yard.robot, self.yard.floor,
-            self.memory, dt, self.model,
+            self.memory, STEP * (number - self.advised), self.model, self.command_delay,
         )  # fmt: skip
         if tapes is None or not tapes.lost[number].any():
             self.v, self.w, self.memory = advice.v, advice.w, advice.memory
+            self.advised = np.full(self.advised.shape, float(number))
             return
         lost = tapes.lost[number]
         self.v, self.w = np.where(lost, self.v, advice.v), np.where(lost, self.w, advice.w)
+        self.advised = np.where(lost, self.advised, number)
         self.memory = Memory(*(np.where(lost, old, new) for old, new in zip(self.memory, advice.memory)))
 
     def _step(self, number: int) -> None:
@@ -199,7 +205,7 @@ class _Run:
         self.delay.keep(keep)
         self.numbers = Numbers(*(part[keep] for part in self.numbers))
         self.memory = self.memory.take(keep)
-        self.v, self.w = self.v[keep], self.w[keep]
+        self.v, self.w, self.advised = self.v[keep], self.w[keep], self.advised[keep]
         self.tapes = None if self.tapes is None else self.tapes.keep(keep)
         self.index, self.done = self.index[keep], self.done[keep]
 

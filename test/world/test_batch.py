@@ -184,16 +184,18 @@ def test_a_lost_pose_leaves_the_command_as_it_was(monkeypatch: pytest.MonkeyPatc
 
 @pytest.mark.parametrize(("rate", "expected"), [(100.0, 100), (50.0, 50), (20.0, 20), (30.0, 30), (70.0, 70)])
 def test_guidance_is_asked_at_the_pose_rate(monkeypatch: pytest.MonkeyPatch, rate: float, expected: int) -> None:
+    """Each time with the seconds since the last pose: whole steps, on the average one over the rate."""
     asked: list[float] = []
 
     def count(senses: Any, numbers: Any, robot: Any, floor: Any, memory: Any, dt: float, *_: Any) -> Advice:
-        asked.append(dt)
+        asked.append(float(np.max(dt)))
         return Advice(np.zeros(1), np.zeros(1), np.zeros(1), memory)
 
     monkeypatch.setattr(batch, "guide", count)
     simulate(YARD, "empty", draw_many(YARD, "empty", 1, 1), [DEFAULTS], [Plant(pose_rate=rate)], time_limit=1.0)
     assert len(asked) == expected
-    assert asked == pytest.approx([1.0 / rate] * expected)
+    assert asked == pytest.approx([1.0 / rate] * expected, abs=STEP)
+    assert sum(asked) == pytest.approx(1.0, abs=STEP)
 
 
 @pytest.mark.parametrize(
