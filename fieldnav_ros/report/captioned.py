@@ -34,10 +34,10 @@ class Picture:
     svg: Markup
     alt: str
     caption: Sentence
-    title: str = ""
+    title: Sentence = ()
 
 
-def picture(key: str, figure: Figure, alt: str, caption: Sentence, title: str = "") -> Picture:
+def picture(key: str, figure: Figure, alt: str, caption: Sentence, title: Sentence = ()) -> Picture:
     """Return a figure made ready for the page; ``key`` must be unique on it."""
     opening = Markup('<svg role="img" aria-label="{}"').format(alt)
     return Picture(key, opening + Markup(as_svg(figure, key).removeprefix("<svg")), alt, caption, title)
@@ -187,7 +187,6 @@ def narrowing_pictures(facts: Facts, other: NamedValues) -> list[Picture]:
                 ranges.narrowing(shown, row, facts.before, other),
                 f"Values of {title_of(row)} proposed over {len(shown)} generations.",
                 caption,
-                title_of(row),
             )
         )
     return result

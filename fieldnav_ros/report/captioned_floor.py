@@ -9,7 +9,7 @@ from fieldnav_ros.report.captioned import Picture, picture
 from fieldnav_ros.report.facts import Facts
 from fieldnav_ros.report.scenes import FailureScene, FieldScene, Ground
 from fieldnav_ros.report.style import WORDS
-from fieldnav_ros.report.values import Sentence, seconds, whole
+from fieldnav_ros.report.values import Name, Sentence, seconds, whole
 
 
 def failure_picture(ground: Ground, scene: FailureScene) -> Picture | None:
@@ -73,7 +73,7 @@ def field_pictures(ground: Ground, scene: FieldScene | None, found: Facts) -> li
                 figure,
                 f"Headings over the floor under {view.set.id} ({word}).{ends}",
                 caption,
-                f"{word}: {view.set.id}",
+                [f"{word}: ", Name(view.set.id)],
             )
         )
     return result

@@ -227,12 +227,13 @@ def time_use(facts: Facts) -> Figure:
         _stack(axes, 1, [part[:3] for part in parts])
         for _, colour, hatch, label in parts:
             axes.barh([0], [0], color=colour, hatch=hatch, label=label)
-        if facts.config is not None:
+        if facts.config is not None and facts.config.episodes is None:
             axes.axvline(facts.config.floor_time_s / 60.0, color=INK, linewidth=1.2, linestyle=(0, (5, 2)))
         axes.set_yticks([0, 1], ["plan", "used"])
         axes.set_ylim(1.5, -0.5)
         axes.set_xlim(left=0)
-        axes.set_xlabel("floor time, min (dashed: what the session was given)")
+        bounded = facts.config is None or facts.config.episodes is None
+        axes.set_xlabel("floor time, min" + (" (dashed: what the session was given)" if bounded else ""))
         axes.tick_params(axis="y", length=0)
         key_above(figure, axes)
     return figure

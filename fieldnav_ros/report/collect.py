@@ -12,6 +12,7 @@ Kind = TypeVar("Kind")
 DECISIONS = (
     ev.BatchOpened,
     ev.GenerationClosed,
+    ev.StageBegun,
     ev.ChallengerNamed,
     ev.PairCompared,
     ev.VerdictReached,
@@ -20,10 +21,12 @@ DECISIONS = (
 
 
 class Place(NamedTuple):
-    """Where an episode stands: its batch and which of its runs."""
+    """Where an episode stands: its batch, which of its runs, and the grade and time limit (s) of that stage."""
 
     opened: ev.BatchOpened
     run: ev.Run
+    grade: str
+    time_limit: float
 
 
 class Collector:
@@ -67,7 +70,9 @@ class Collector:
         self.live.append((event, self.session.state.floor_used_s))
         if isinstance(event, ev.BatchOpened):
             self._check(event)
-            self.places.update({run.episode_id: Place(event, run) for run in event.runs})
+            stage = self.session.state.stage
+            places = (Place(event, run, stage.grade, stage.time_limit) for run in event.runs)
+            self.places.update({place.run.episode_id: place for place in places})
 
     def _check(self, opened: ev.BatchOpened) -> None:
         # the model of the event bounds no index
@@ -93,8 +98,12 @@ class Collector:
 
     def open_episodes(self) -> int:
         """Return how many episodes wait for an outcome."""
-        batch = self.session.state.batch
-        return sum(run.episode_id not in batch.costs for run in batch.runs) if batch else 0
+        opened = [event for event, _ in self.live if isinstance(event, ev.BatchOpened)]
+        closed = any(isinstance(event, (ev.GenerationClosed, ev.VerdictReached)) for event, _ in self.live[-1:])
+        if not opened or closed:
+            return 0
+        done = {voided.episode_id for voided, _ in self.voided} | self.scored.keys()
+        return sum(place.opened is opened[-1] and number not in done for number, place in self.places.items())
 
     def decided(self, kind: type[Kind]) -> list[tuple[Kind, float]]:
         """Return the decisions of one kind that were not taken back, each with the floor time used by then (s)."""

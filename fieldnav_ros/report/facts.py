@@ -30,6 +30,7 @@ class Episode:
     set: NamedValues
     role: ev.Role
     layout: Layout
+    time_limit: float
     kind: OutcomeKind
     time: float
     cost: float
@@ -105,6 +106,7 @@ class Generation:
 
     number: int
     batch: int
+    grade: str
     sets: tuple[ParameterSet, ...]
     costs: tuple[float, ...]
     control: float | None
@@ -156,6 +158,11 @@ class Facts:
     def about(self) -> ev.About:
         """What the session said of itself."""
         return (self.begun.about if self.begun else None) or ev.About()
+
+    @property
+    def grades(self) -> tuple[str, ...]:
+        """Grades of the floor that the search went through, in order."""
+        return tuple(dict.fromkeys(item.grade for item in self.generations))
 
     @property
     def failures(self) -> tuple[Episode, ...]:

@@ -56,6 +56,7 @@ def _episodes(seen: Collector) -> tuple[Episode, ...]:
                 set=NamedValues(chosen.id, chosen.parameters),
                 role=chosen.role,
                 layout=place.opened.layouts[place.run.layout_index],
+                time_limit=place.time_limit,
                 kind=scored.outcome.kind,
                 time=scored.outcome.time,
                 cost=scored.cost,
@@ -114,6 +115,7 @@ def _generations(seen: Collector, episodes: tuple[Episode, ...]) -> tuple[Genera
             Generation(
                 number=len(result) + 1,
                 batch=opened.batch,
+                grade=seen.places[opened.runs[0].episode_id].grade if opened.runs else "",
                 sets=tuple(item.parameters for item in opened.sets if item.role == "candidate"),
                 costs=end.costs if end else (),
                 control=end.control if end else None,

@@ -24,6 +24,7 @@ from fieldnav_ros.report.values import (
     whole,
 )
 from fieldnav_ros.report.wording import time_sentence
+from fieldnav_ros.tuning.config import SessionConfig
 
 Rows = list[tuple[str, Sentence]]
 
@@ -37,7 +38,7 @@ def title_block(record: Record) -> Rows:
         ("place", [Name(about.place)] if about.place else ["not recorded"]),
         ("in service", [Name(found.after.id)] if found.after else ["nothing"]),
         ("episodes that count", [whole("episodes", len(found.episodes))]),
-        ("floor time", time_sentence(found) if found.begun else ["none"]),
+        ("floor time used", time_sentence(found)),
         ("recorded", [Name(_span(origin.first, origin.last))] if origin.first else ["never"]),
     ]
 
@@ -80,7 +81,12 @@ def _session(facts: Facts) -> list[tuple[str, Rows]]:
         ("seed", [whole("config.seed", config.seed)]),
         ("grade", [Name(config.grade)]),
         ("time limit", [seconds("config.time_limit", config.time_limit)]),
-        ("floor time", [minutes("config.floor_time", config.floor_time_s)]),
+        (
+            "floor time",
+            [minutes("config.floor_time", config.floor_time_s)] if config.episodes is None else ["unbounded"],
+        ),
+        ("episodes", ["unbounded"] if config.episodes is None else [whole("config.episodes", config.episodes)]),
+        ("grades before that", _lead_in(config)),
         ("share of it kept for the verdict", [share("config.verdict_share", config.verdict_share)]),
         ("bound on false acceptance, whole session", [share("config.alpha", config.alpha)]),
         ("most verdicts", [whole("config.rounds", config.rounds)]),
@@ -101,6 +107,15 @@ def _session(facts: Facts) -> list[tuple[str, Rows]]:
         ("ended", [Name(facts.ended)] if facts.ended is not None else ["not in this record"]),
     ]
     return [("Session", rows)]
+
+
+def _lead_in(config: SessionConfig) -> Sentence:
+    if not config.lead_in:
+        return ["none"]
+    parts = list[str | Value | Name]()
+    for number, stage in enumerate(config.lead_in):
+        parts += [", " if number else "", Name(stage.grade), " to ", seconds(f"lead_in.{number}", stage.time_limit)]
+    return parts
 
 
 def _yard(facts: Facts) -> list[tuple[str, Rows]]:

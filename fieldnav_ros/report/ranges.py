@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Sequence
 
 import numpy as np
@@ -82,7 +83,7 @@ def narrowing(generations: Sequence[Generation], row: Parameter, before: NamedVa
     """What the search proposed for one parameter, generation by generation."""
     with styled():
         figure = Figure(figsize=(3.1, 1.75))
-        axes = figure.add_axes((0.19, 0.25, 0.79, 0.62))  # the same for all nine, so that they line up
+        axes = figure.add_axes((0.15, 0.25, 0.83, 0.62))  # the same for all nine, so that they line up
         numbers = [item.number for item in generations]
         values = [np.array([getattr(chosen, row.name) for chosen in item.sets]) for item in generations]
         wide = min(7.0, 100.0 / max(len(numbers), 1))
@@ -96,6 +97,9 @@ def narrowing(generations: Sequence[Generation], row: Parameter, before: NamedVa
         axes.axhline(getattr(before.values, row.name), color=BEFORE, linewidth=1.6, linestyle=(0, (5, 2)))
         if other.id != before.id:
             axes.axhline(getattr(other.values, row.name), color=AFTER, linewidth=1.6)
+        for last, item in itertools.pairwise(generations):
+            if item.grade != last.grade:
+                axes.axvline(item.number - 0.5, color=INK, linewidth=0.9, linestyle=(0, (1, 2)))
         if row.scale == "log":
             axes.set_yscale("log")
         axes.yaxis.set_minor_locator(NullLocator())
@@ -106,7 +110,6 @@ def narrowing(generations: Sequence[Generation], row: Parameter, before: NamedVa
         axes.set_ylim(row.low, row.high)
         axes.set_xlim(0.4, max(numbers) + 0.6)
         axes.set_xlabel("generation")
-        axes.set_ylabel(unit_of(row))
-        axes.set_title(title_of(row), loc="left")
+        axes.set_title(f"{title_of(row)}, {unit_of(row)}", loc="left")
         whole_ticks(axes, most=5)
     return figure

@@ -31,21 +31,20 @@ class Ground:
 
     yard: Yard | None
     model: str | None
-    time_limit: float
 
     @classmethod
     def of(cls, facts: Facts) -> Ground:
         """Return the ground of a session."""
         about = facts.about
-        return cls(
-            about.yard, about.model if about.model in MODELS else None, facts.config.time_limit if facts.config else 0.0
-        )
+        return cls(about.yard, about.model if about.model in MODELS else None)
 
-    def run(self, layouts: Sequence[Layout], sets: Sequence[NamedValues]) -> list[FloorTrack]:
+    def run(
+        self, layouts: Sequence[Layout], sets: Sequence[NamedValues], time_limits: Sequence[float]
+    ) -> list[FloorTrack]:
         """Run sets on layouts; nothing where that cannot be done."""
         if self.yard is None or self.model is None or not layouts:
             return []
-        return replay(self.yard, layouts, [item.values for item in sets], self.model, self.time_limit)
+        return replay(self.yard, layouts, [item.values for item in sets], self.model, time_limits)
 
 
 @dataclass(frozen=True)
@@ -81,7 +80,9 @@ def failure_scene(facts: Facts, ground: Ground, tracks: Tracks) -> FailureScene:
 
 def _repeated(episodes: Sequence[Episode], ground: Ground) -> dict[int, FloorTrack]:
     """Return the tracks of those episodes that the simulator repeats."""
-    again = ground.run([item.layout for item in episodes], [item.set for item in episodes])
+    again = ground.run(
+        [item.layout for item in episodes], [item.set for item in episodes], [item.time_limit for item in episodes]
+    )
     return {item.id: run for item, run in zip(episodes, again) if _repeats(item, run)}
 
 
@@ -124,14 +125,16 @@ def field_scene(facts: Facts, ground: Ground, tracks: Tracks) -> FieldScene | No
         shown.append(other)
     verdict = [item for item in facts.episodes if item.phase == "verdict"]
     last = [item for item in verdict if facts.rounds and item.set.id == facts.rounds[-1].challenger.id]
-    layout = (last or verdict or list(facts.episodes))[0].layout
+    shown_on = (last or verdict or list(facts.episodes))[0]
+    layout = shown_on.layout
     seen = [item.layout for item in (verdict or facts.episodes)]
     around = _other_starts(ground.yard, layout, seen)
     views = []
     for chosen in shown:
         ids = [item.id for item in facts.episodes if item.layout == layout and item.set.id == chosen.id]
         real = next((tracks[number] for number in ids if number in tracks), None)
-        runs = ground.run([layout, *around], [chosen] * (1 + len(around)))
+        count = 1 + len(around)
+        runs = ground.run([layout, *around], [chosen] * count, [shown_on.time_limit] * count)
         views.append(View(chosen, real or runs[0], tuple(runs[1:]), real is not None))
     return FieldScene(layout, tuple(views), bool(verdict))
 

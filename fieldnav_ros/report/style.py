@@ -74,18 +74,21 @@ _SETTINGS: Any = {
     "legend.frameon": False,
     "legend.handlelength": 1.8,
     "legend.columnspacing": 1.2,
-    "svg.fonttype": "none",
     "path.simplify": True,
 }
 
 
 @contextmanager
-def styled(salt: str = "fieldnav") -> Iterator[None]:
-    """Draw and save under the page's settings, whatever the user's own are; ``salt`` makes SVG ids a figure's own."""
+def styled(salt: str = "fieldnav", outlines: bool = False) -> Iterator[None]:
+    """Draw and save under the page's settings, whatever the user's own are.
+
+    ``salt`` makes SVG ids a figure's own; ``outlines`` turns text into shapes, for pictures outside the page.
+    """
     with mpl.rc_context():
         mpl.rcdefaults()
         mpl.rcParams.update(_SETTINGS)
         mpl.rcParams["svg.hashsalt"] = salt
+        mpl.rcParams["svg.fonttype"] = "path" if outlines else "none"
         yield
 
 

@@ -163,7 +163,7 @@ def time_rows(facts: Facts) -> list[tuple[str, Value | None, Value]]:
         ("verdict", minutes("plan.verdict", reserve) if plan else None, minutes("used.verdict", verdict_s)),
         ("void episodes", None, minutes("used.void", spent.void)),
         ("other", None, minutes("used.other", spent.other)),
-        ("all", minutes("floor_time_given", plan.floor_left_s) if plan else None, minutes("used.all", spent.total)),
+        ("all", minutes("plan.all", plan.floor_left_s) if plan else None, minutes("used.all", spent.total)),
         ("resets, of all", None, minutes("used.resets", spent.search_reset + spent.verdict_reset)),
         (
             "search episodes",

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import math
-
 from fieldnav_ros.model import OutcomeKind
 from fieldnav_ros.parameters import TABLE
 from fieldnav_ros.report.drift import Drift
@@ -126,6 +124,8 @@ def _simulated(facts: Facts, scene: FailureScene) -> list[Sentence]:
                 " checked ones to the step. A floor, tyres and a camera of the real kind have had no say in them.",
             ]
         ]
+    if facts.about.place == "simulation":
+        return [["These are simulated episodes, as the record says. Nothing here has been tried on a robot."]]
     if not facts.about.place:
         return [["The record does not say where it was made. Numbers hold for one floor on one day."]]
     return []
@@ -218,14 +218,26 @@ def _reports(facts: Facts) -> list[Sentence]:
 
 
 def time_sentence(facts: Facts) -> Sentence:
-    """Return floor time used against what was given."""
-    given = facts.config.floor_time_s if facts.config else 0.0
-    used = facts.spending.total
+    """Return what was used of the session's budget: floor time, or episodes where those bound it."""
+    config, used = facts.config, facts.spending.total
+    if config is None:
+        return ["none"]
+    if config.episodes is not None:
+        run = len(facts.episodes)
+        return [
+            minutes("floor_time_used", used),
+            "; ",
+            whole("episodes", run),
+            " of ",
+            whole("config.episodes", config.episodes),
+            " episodes",
+        ]
+    given = config.floor_time_s
     return [
         minutes("floor_time_used", used),
         " of ",
         minutes("floor_time_given", given),
-        " used (",
-        share("floor_time_share", used / given if given else math.nan),
+        " (",
+        share("floor_time_share", used / given),
         ")",
     ]

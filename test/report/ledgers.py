@@ -4,12 +4,14 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Sequence
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 
+from fieldnav_ros.guide import DEFAULT_MODEL
 from fieldnav_ros.model import Layout, Outcome, OutcomeKind
 from fieldnav_ros.resources import config_path
-from fieldnav_ros.tuning.events import About, Episode, Event, SessionConfig
+from fieldnav_ros.tuning.events import About, Episode, Event, PairCompared, SessionConfig, VerdictReached
 from fieldnav_ros.tuning.ledger import Ledger
 from fieldnav_ros.tuning.session import Report, Session
 from fieldnav_ros.world import batch, layouts
@@ -30,7 +32,7 @@ def simulated(yard: Yard, grade: str) -> Runner:
         sets = {item.set_id: item.parameters for item in episodes}
         places = {item.layout.seed: item.layout for item in episodes}
         names, seeds = list(sets), list(places)
-        result = batch.simulate(yard, grade, list(places.values()), list(sets.values()))
+        result = batch.simulate(yard, grade, list(places.values()), list(sets.values()), model=DEFAULT_MODEL)
         return [result.outcome(names.index(item.set_id), seeds.index(item.layout.seed)) for item in episodes]
 
     return run
@@ -87,7 +89,7 @@ def begun(config: SessionConfig, about: About | None = None) -> tuple[Session, l
     """Return a session that has begun on the parcel yard, and its events."""
     yard = parcel_yard()
     session, log = session_of(yard), list[Event]()
-    known = about or About(software="fieldnav_ros test", model="published", yard=yard, place="test bench")
+    known = about or About(software="fieldnav_ros test", model=DEFAULT_MODEL, yard=yard, place="test bench")
     keep(session, log, session.begin(config, about=known))
     return session, log
 
@@ -100,3 +102,137 @@ def stored(path: Path, log: Sequence[Event]) -> Path:
     ) as ledger:
         ledger.append(log)
     return path
+
+
+def small(seed: int = 1, minutes: float = 8.0, **told: Any) -> SessionConfig:
+    """Return the configuration of a session that the tests can afford."""
+    numbers = {"population": 4, "layouts": 2, "least_pairs": 4, "rounds": 2, **told}
+    return SessionConfig.model_validate({"seed": seed, "floor_time_s": 60.0 * minutes, "grade": "moving", **numbers})
+
+
+def by_simulation() -> list[Event]:
+    session, log = begun(small(minutes=6.0, pairs_at_once=16, rounds=1))
+    return drive(session, log, simulated(parcel_yard(), "moving"))
+
+
+def accepted() -> list[Event]:
+    session, log = begun(small(seed=2, minutes=30.0))
+    return drive(session, log, made_up(failing=0.05, gain=3.5))
+
+
+def kept() -> list[Event]:
+    session, log = begun(small(seed=3, minutes=12.0, rounds=1))
+    return drive(session, log, made_up(failing=0.3, gain=-1.0))
+
+
+def only_begun() -> list[Event]:
+    return begun(small())[1]
+
+
+def one_episode() -> list[Event]:
+    session, log = begun(small())
+    return drive(session, log, made_up(failing=0.0), at_most=1)
+
+
+def only_void() -> list[Event]:
+    session, log = begun(small())
+    for _ in range(5):
+        void = Outcome(kind=OutcomeKind.VOID, time=1.5)
+        keep(session, log, session.record(session.pending()[0].id, void, 3.5, "/judge_node"))
+    return log
+
+
+def only_failures() -> list[Event]:
+    session, log = begun(small(minutes=10.0))
+    return drive(session, log, made_up(failing=1.0))
+
+
+def cut_in_search() -> list[Event]:
+    session, log = begun(small(minutes=20.0))
+    return drive(session, log, made_up(), at_most=17)
+
+
+def cut_in_verdict() -> list[Event]:
+    session, log = begun(small(seed=5, minutes=12.0))
+    runner = made_up(failing=0.1, gain=0.5)
+    while sum(event.kind == "pair_compared" for event in log) < 3:
+        drive(session, log, runner, at_most=1)
+    return drive(session, log, runner, at_most=1)
+
+
+def troubled() -> list[Event]:
+    """Return a session with everything that can happen beside plain episodes."""
+    session, log = begun(small(seed=6, minutes=14.0))
+    runner = made_up(failing=0.2, gain=0.5)
+    drive(session, log, runner, at_most=3)
+    keep(session, log, session.void(session.pending()[0].id, "operator at the pit"))
+    keep(session, log, session.spend(45.0, "battery changed"))
+    keep(session, log, session.note("tuner", f"episode {session.pending()[0].id}: no outcome in time, run again"))
+    keep(session, log, session.record(1, Outcome(kind=OutcomeKind.ARRIVED, time=2.0), 4.0, "judge"))
+    keep(session, log, session.pause())
+    keep(session, log, session.resume())
+    while not (session.state.last_scored and session.state.generations):
+        drive(session, log, runner, at_most=1)
+    keep(session, log, session.void(source="operator"))  # takes the closed generation back
+    drive(session, log, runner)
+    return log
+
+
+def without_about() -> list[Event]:
+    yard = parcel_yard()
+    session, log = session_of(yard), list[Event]()
+    keep(session, log, session.begin(small(seed=8)))
+    return drive(session, log, made_up(), at_most=40)
+
+
+def curriculum() -> list[Event]:
+    """Return a session bounded by episodes that goes through an easier grade first."""
+    lead_in = ({"grade": "parked", "time_limit": 7.0},)
+    session, log = begun(small(seed=10, episodes=80, lead_in=lead_in, pairs_at_once=20))
+    run = {grade: simulated(parcel_yard(), grade) for grade in ("parked", "moving")}
+    while episodes := session.pending():
+        grade = "parked" if episodes[0].time_limit == 7.0 else "moving"
+        drive(session, log, run[grade], at_most=len(episodes))
+    return log
+
+
+def huge_evidence() -> list[Event]:
+    """Return a session whose e-values no float holds: the fold takes the evidence as it stands in the record."""
+    result = list[Event]()
+    for event in accepted():
+        if isinstance(event, (PairCompared, VerdictReached)):
+            event = event.model_copy(update={"log_evidence": 1e3 * event.log_evidence})
+        result.append(event)
+    return result
+
+
+def hostile() -> list[Event]:
+    """Return a session whose every free text tries to get out of the page."""
+    bad = "</style></title><script>alert(1)</script><img src=x onerror=alert(2)>\"'&{{7*7}}{% raw %}"
+    yard = parcel_yard().model_copy(update={"name": bad[:80]})
+    session, log = begun(small(seed=11), About(software=bad, model=bad, yard=yard, place=bad))
+    keep(session, log, session.note(bad, "long word: " + "x" * 1500))
+    keep(session, log, session.note("\u202e right to left", bad + "\n\x00\x1b[31m"))
+    keep(session, log, session.void(session.pending()[0].id, bad))
+    keep(session, log, session.record(10**6, Outcome(kind=OutcomeKind.ARRIVED, time=1.0), 1.0, bad))
+    keep(session, log, session.stop(bad))
+    return log
+
+
+ZOO: dict[str, Callable[[], list[Event]]] = {
+    "empty": list,
+    "only_begun": only_begun,
+    "one_episode": one_episode,
+    "only_void": only_void,
+    "only_failures": only_failures,
+    "cut_in_search": cut_in_search,
+    "cut_in_verdict": cut_in_verdict,
+    "kept": kept,
+    "accepted": accepted,
+    "troubled": troubled,
+    "without_about": without_about,
+    "curriculum": curriculum,
+    "huge_evidence": huge_evidence,
+    "hostile": hostile,
+    "by_simulation": by_simulation,
+}
