@@ -15,8 +15,8 @@ LAYERS = (
     {"errors"},
     {"model", "parameters"},
     {"yard", "params_file", "resources", "arguments"},
+    {"drive", "pending", "tracking"},
     {"field"},
-    {"drive", "tracking"},
     {"guide", "crowd"},
     {"world"},
     {"pilot"},
@@ -32,7 +32,9 @@ SHELL = {"nodes", "cli"}
 ROS = re.compile(r"rclpy|rclcpp|rcl_|ament_|launch|rosidl|rosgraph|tf2|unique_identifier|.*_(msgs|srvs|interfaces)$")
 
 # Pure code gets time, randomness and files from its caller.
-PURE = {"errors", "model", "parameters", "field", "drive", "tracking", "guide", "crowd", "pilot", "world", "tuning"}
+PURE = {
+    "errors", "model", "parameters", "drive", "pending", "tracking", "field", "guide", "crowd", "pilot", "world", "tuning",
+}  # fmt: skip
 PURE_BUT = {
     "tuning/ledger.py": "writes the session's record",
     "tuning/prior_file.py": "reads the file that a session may start from",
