@@ -62,19 +62,19 @@ class ParameterSet(Frozen):
     )  # fmt: skip
     motion_lead: Number = _number(
         "field", "K_o", "s", 0.30, 0.0, 0.60, "linear",
-        "how far ahead the robot's and the obstacles' motion is looked at",
+        "how far ahead all motion is looked at",
     )  # fmt: skip
     guard_distance: Number = _number(
         "field", "d_min", "m", 0.16, 0.08, 0.35, "log",
-        "centre distance wanted from an obstacle of the robot's size; others and walls by their own",
+        "distance wanted between the centres of the robot and an obstacle of its size",
     )  # fmt: skip
     guard_fade: Number = _number(
         "field", "delta", "m", 0.05, 0.01, 0.30, "log",
-        "half the width over which the wish for that distance fades out",
+        "half the width over which that wish fades out",
     )  # fmt: skip
     sidestep: Number = _number(
         "field", "own", "rad", 0.40, 0.0, 1.5, "linear",
-        "how far to either side ways past an obstacle are tried: once, twice and four times this",
+        "step to either side in which ways past are tried: 1, 2 and 4 of it",
     )  # fmt: skip
     steer_gain: Number = _number(
         "drive", "K_w", "s^-1 rad^-1/2", 5.0, 1.0, 20.0, "log",

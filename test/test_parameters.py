@@ -23,8 +23,8 @@ CONTRACT = {
     "field.guard_fade": ("delta", "m", 0.01, 0.30),
     "field.sidestep": ("own", "rad", 0.0, 1.5),
     "drive.steer_gain": ("K_w", "s^-1 rad^-1/2", 1.0, 20.0),
-    "drive.arrival_gain": ("K_p", "s^-1", 1.0, 10.0),
-    "drive.lateral_accel": ("R_m", "m s^-2", 0.3, 6.0),
+    "drive.arrival_gain": ("K_p", "s^-1", 1.0, 40.0),
+    "drive.lateral_accel": ("R_m", "m s^-2", 0.3, 12.0),
 }
 """Names, units and ranges that users, ROS parameter files and ledgers rely on (the interface's contract)."""
 UNIT = st.floats(0.0, 1.0)
