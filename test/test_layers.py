@@ -33,7 +33,8 @@ ROS = re.compile(r"rclpy|rclcpp|rcl_|ament_|launch|rosidl|rosgraph|tf2|unique_id
 
 # Pure code gets time, randomness and files from its caller.
 PURE = {
-    "errors", "model", "parameters", "drive", "pending", "tracking", "field", "guide", "crowd", "pilot", "world", "tuning",
+    "errors", "model", "parameters", "drive", "pending", "tracking", "field", "guide", "crowd", "pilot", "world",
+    "tuning",
 }  # fmt: skip
 PURE_BUT = {
     "tuning/ledger.py": "writes the session's record",
