@@ -53,7 +53,7 @@ class View(NamedTuple):
 class Pairing:
     """Brings poses and sightings of the same stamp together, in whatever order they come; for lockstep."""
 
-    KEPT = 50
+    KEPT = 2000
 
     def __init__(self) -> None:
         self._poses: dict[int, Reading] = {}
@@ -108,8 +108,8 @@ class Crowd:
         """Take in what one obstacle says of itself."""
         self._movers[source] = (mover, moment)
 
-    def at(self, moment: int, ahead: float = 0.0) -> View:
-        """Return the obstacles ``ahead`` seconds after the moment (ns) of a pose, at uniform motion."""
+    def at(self, moment: int) -> View:
+        """Return the obstacles at the moment (ns) of a pose, moved on at uniform motion."""
         tables: list[FloatArray] = []
         left_out: list[str] = []
         lag = 0.0
@@ -118,25 +118,25 @@ class Crowd:
             if abs(lag) > self._rules.patience:
                 left_out, lag = ["obstacles"], 0.0
             else:
-                tables.append(self._tracked(self._tracks.stamp + lag, ahead))
+                tables.append(self._tracked(self._tracks.stamp + lag))
         for source, (mover, when) in self._movers.items():
             behind = (moment - when) / NANO
             if abs(behind) > self._rules.patience:
                 left_out.append(source)
                 continue
             lag = max(lag, behind, key=abs)
-            dt = behind + ahead
-            tables.append(np.array([[mover.x + mover.vx * dt], [mover.y + mover.vy * dt], [mover.vx], [mover.vy]]))
+            x, y = mover.x + mover.vx * behind, mover.y + mover.vy * behind
+            tables.append(np.array([[x], [y], [mover.vx], [mover.vy]]))
         if not tables:
             return View(Obstacles.none(1), lag, tuple(left_out))
         table = tables[0] if len(tables) == 1 else np.concatenate(tables, axis=1)
         x, y, vx, vy = table[:, :, None]
         return View(Obstacles(x, y, vx, vy, np.full(x.shape, self._radius)), lag, tuple(left_out))
 
-    def _tracked(self, now: float, ahead: float) -> FloatArray:
-        """Return x, y, vx, vy (4, M) of the tracks that are fresh enough, ``ahead`` seconds after ``now``."""
+    def _tracked(self, now: float) -> FloatArray:
+        """Return x, y, vx, vy (4, M) of the tracks that are fresh enough, moved on to ``now`` (s)."""
         tracks = self._tracks
         fresh = now - tracks.seen <= self._rules.patience
         if not fresh.all():
             tracks = tracks.take(fresh)
-        return np.concatenate([tracks.places_at(now + ahead), tracks.velocity])
+        return np.concatenate([tracks.places_at(now), tracks.velocity])

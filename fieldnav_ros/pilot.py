@@ -17,7 +17,7 @@ from fieldnav_ros.drive import wrap
 from fieldnav_ros.guide import Memory, Senses, guide
 from fieldnav_ros.model import Pose, Robot
 from fieldnav_ros.parameters import Numbers
-from fieldnav_ros.world.plant import arc
+from fieldnav_ros.pending import slots
 from fieldnav_ros.yard import Arrival, Floor
 
 JUMP_SLACK = 0.10
@@ -70,7 +70,7 @@ class Pilot:
     _memory: Memory
     _memory_before: Memory
     _dt: float
-    _sent: list[tuple[int, float, float]]
+    _driving: bool
 
     def __init__(self, rules: PilotRules, crowd: Crowd, numbers: Numbers, model: str) -> None:
         self.rules, self.crowd, self.numbers, self.model = rules, crowd, numbers, model
@@ -81,6 +81,8 @@ class Pilot:
         self.standing: Halt = NO_GOAL
         self._blind: dict[str, str] = {}
         self._arrived = False
+        # twice the poses that are usual may come while a command is on its way
+        self._slots = slots(rules.command_delay, 0.5 * rules.pose_period)
         self._rest()
         self._last: Reading | None = None
         self._last_moment: int | None = None
@@ -122,7 +124,9 @@ class Pilot:
             far = math.hypot(reading.x - before.x, reading.y - before.y)
             return self._stand(Halt("pose_jump", f"the pose jumped by {far:.2f} m, further than the robot can drive"))
         if not repeated:
-            self._advance(before, reading)
+            gap = self._advance(before, reading)
+            if gap is not None:
+                return self._stand(gap)
         return self._decide()
 
     def on_bad_obstacles(self, source: str, sentence: str) -> Halt:
@@ -181,18 +185,16 @@ class Pilot:
         if self.rules.match_stamps and self.crowd.stamp != reading.stamp:
             return None
         moment = reading.stamp if self.rules.match_stamps else self._last_moment
-        view = self.crowd.at(moment, self.rules.command_delay)
-        x, y, yaw = self._predicted(reading)
-        row = [np.array([value]) for value in (x, y, yaw, goal.x, goal.y, goal.yaw)]
+        view = self.crowd.at(moment)
+        row = [np.array([value]) for value in (reading.x, reading.y, reading.yaw, goal.x, goal.y, goal.yaw)]
         advice = guide(
             Senses._make([*row, view.obstacles]), self.numbers, self.rules.robot, self.rules.floor,
-            self._memory_before, self._dt, self.model,
+            self._memory_before, self._dt, self.model, self.rules.command_delay,
         )  # fmt: skip
         heading, v, w = float(advice.heading[0]), float(advice.v[0]), float(advice.w[0])
         if not (math.isfinite(heading) and math.isfinite(v) and math.isfinite(w)):
             return self._stand(Halt("not_finite", "the field gave no finite command at this place"))
-        self._memory = advice.memory
-        self._keep_sent(reading.stamp, v, w)
+        self._memory, self._driving = advice.memory, True
         return Order(reading, heading, v, w, view)
 
     def _trouble_with_time(self, reading: Reading, moment: int, now: int) -> Halt | None:
@@ -218,13 +220,15 @@ class Pilot:
         far = math.hypot(reading.x - before.x, reading.y - before.y)
         return far > reach + JUMP_SLACK or turn > 2.0 * reach / self.rules.robot.track + JUMP_SLACK_YAW
 
-    def _advance(self, before: Reading | None, reading: Reading) -> None:
-        """Let time pass from the last pose to this one."""
+    def _advance(self, before: Reading | None, reading: Reading) -> Halt | None:
+        """Let time pass from the last pose to this one; a halt if that was too long and the robot was not told."""
         dt = self.rules.pose_period if before is None else (reading.stamp - before.stamp) / NANO
         if dt > (LOCKSTEP_PAUSE if self.rules.match_stamps else self.rules.pose_timeout):
-            self._rest()  # the robot was told to stand meanwhile
-            dt = self.rules.pose_period
+            untold = self._driving and not self.rules.match_stamps
+            self._rest()
+            return Halt("pose_gap", f"poses were missing for {dt:.2f} s") if untold else None
         self._memory_before, self._dt = self._memory, dt
+        return None
 
     def _arrival(self, reading: Reading, goal: Pose) -> Halt | None:
         near = math.hypot(reading.x - goal.x, reading.y - goal.y) <= self.rules.arrival.position
@@ -244,36 +248,15 @@ class Pilot:
         self.end_episode()
         return Halt("episode_overdue", f"episode {name} has run for {passed:.1f} s and nobody has ended it")
 
-    def _predicted(self, reading: Reading) -> tuple[float, float, float]:
-        """Return the pose at the moment when a command sent now reaches the wheels, from those still on the way."""
-        x, y, yaw = reading.x, reading.y, reading.yaw
-        delay = self.rules.command_delay
-        if delay <= 0.0:
-            return x, y, yaw
-        edges = [*(when for when, _, _ in self._sent[1:]), reading.stamp]
-        for (when, v, w), until in zip(self._sent, edges):
-            lasts = (until - max(when, reading.stamp - round(delay * NANO))) / NANO
-            if lasts > 0.0:
-                x, y, yaw = arc(x, y, yaw, v * lasts, w * lasts)
-        return x, y, yaw
-
-    def _keep_sent(self, stamp: int, v: float, w: float) -> None:
-        if self._sent and self._sent[-1][0] == stamp:
-            self._sent.pop()
-        self._sent.append((stamp, v, w))
-        since = stamp - round((self.rules.command_delay + self.rules.pose_timeout) * NANO)
-        while self._sent[0][0] < since:
-            self._sent.pop(0)
-
     def _stand(self, halt: Halt) -> Halt:
         self.standing = halt
         self._rest()
         return halt
 
     def _rest(self) -> None:
-        self._memory = self._memory_before = Memory.start(1)
+        self._memory = self._memory_before = Memory.start(1, self._slots)
         self._dt = self.rules.pose_period
-        self._sent = []
+        self._driving = False
 
     def _start_anew(self, keep_pose: bool = False) -> None:
         self._rest()

@@ -9,12 +9,13 @@ import numpy as np
 import pytest
 
 from fieldnav_ros.crowd import NANO, Crowd, Reading, Sighting
-from fieldnav_ros.guide import Memory, Senses, guide
+from fieldnav_ros.field.avoidance import Obstacles
+from fieldnav_ros.guide import DEFAULT_MODEL, Memory, Senses, guide
 from fieldnav_ros.model import Pose, Robot
 from fieldnav_ros.parameters import DEFAULTS
+from fieldnav_ros.pending import slots
 from fieldnav_ros.pilot import Halt, Order, Pilot, PilotRules
 from fieldnav_ros.tracking import Rules
-from fieldnav_ros.world.plant import arc
 from fieldnav_ros.yard import Arrival, Floor
 
 ROBOT = Robot(radius=0.06, track=0.1, wheel_speed=1.2, wheel_accel=4.0)
@@ -117,7 +118,8 @@ def test_after_any_stop_the_command_starts_from_rest(halt: object) -> None:
 def test_a_gap_in_poses_is_no_licence_to_accelerate() -> None:
     made = pilot()
     give(made, pose(0))
-    order = give(made, pose(5000))
+    assert kind(give(made, pose(5000))) == "pose_gap"
+    order = give(made, pose(5020))
     assert isinstance(order, Order)
     assert order.v <= ROBOT.wheel_accel * RULES.pose_period + 1e-12
 
@@ -191,15 +193,16 @@ def test_lockstep_waits_for_the_obstacles_of_the_very_moment() -> None:
     assert give(made, pose(20)) is not None
 
 
-def test_command_delay_looks_ahead_along_the_commands_on_their_way() -> None:
-    """The pose that is guided from is the one after the arcs of the commands of the last 60 ms (exact arcs)."""
-    made = pilot(command_delay=0.06)
-    sent = []
+@pytest.mark.parametrize("delay", [0.0, 0.06])
+def test_a_robot_with_dead_time_is_guided_as_guide_says(delay: float) -> None:
+    """The stated delay reaches the maths, with room to remember the commands on their way."""
+    made, memory = pilot(command_delay=delay), Memory.start(1, slots(delay, 0.5 * RULES.pose_period))
+    made.model = DEFAULT_MODEL
     for number in range(8):
         order = give(made, pose(20.0 * number, yaw=0.5))
+        row = [np.array([value]) for value in (0.5, 0.8, 0.5, GOAL.x, GOAL.y, GOAL.yaw)]
+        senses = Senses._make([*row, Obstacles.none(1)])
+        advice = guide(senses, DEFAULTS.numbers(), ROBOT, FLOOR, memory, 0.02, DEFAULT_MODEL, delay)
+        memory = advice.memory
         assert isinstance(order, Order)
-        sent.append((order.v, order.w))
-    expected = (0.5, 0.8, 0.5)
-    for v, w in sent[-3:]:
-        expected = arc(*expected, 0.02 * v, 0.02 * w)
-    assert made._predicted(pose(160, yaw=0.5)) == pytest.approx(expected, abs=1e-12)
+        assert (order.heading, order.v, order.w) == (advice.heading[0], advice.v[0], advice.w[0])

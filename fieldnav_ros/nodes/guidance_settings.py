@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from fieldnav_ros.guide import MODELS
+from fieldnav_ros.guide import DEFAULT_MODEL, MODELS
 from fieldnav_ros.nodes.base import MATCH_STAMPS, RELIABLE_INPUT, YARD
 from fieldnav_ros.nodes.convert import POSE_TYPES
 from fieldnav_ros.nodes.declare import Setting, tunable_settings
@@ -43,6 +43,6 @@ SETTINGS: tuple[Setting, ...] = (
     RELIABLE_INPUT,
     Setting("field_rate", 5.0, "pictures of the field per second while somebody looks; 0: none", 0.0, 10.0),
     Setting("field_arrows", 24.0, "arrows along the floor's longer side in such a picture", 4.0, 60.0),
-    Setting("field.model", MODELS[0], "which field guides", choices=MODELS, live=True),
+    Setting("field.model", DEFAULT_MODEL, "which field guides", choices=MODELS, live=True),
     *tunable_settings(),
 )

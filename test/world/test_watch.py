@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 
 from fieldnav_ros.crowd import NANO, Crowd, Reading, Sighting
+from fieldnav_ros.guide import DEFAULT_MODEL
 from fieldnav_ros.model import Layout, Outcome, OutcomeKind, Pose
 from fieldnav_ros.parameters import DEFAULTS
 from fieldnav_ros.pilot import Order, Pilot, PilotRules
@@ -26,7 +27,7 @@ STEP_NS = round(STEP * NANO)
 def run_as_nodes_do(yard: Yard, layout: Layout, limit: float) -> Outcome:
     """Guidance, world and judge as in a lockstep session, without the messages between them."""
     rules = PilotRules(yard.robot, yard.floor, yard.arrival, match_stamps=True)
-    pilot = Pilot(rules, Crowd(EXACT, yard.cart_radius), DEFAULTS.numbers(), "published")
+    pilot = Pilot(rules, Crowd(EXACT, yard.cart_radius), DEFAULTS.numbers(), DEFAULT_MODEL)
     pilot.start_episode("e", layout.goal, limit)
     crowd = Crowd(EXACT, yard.cart_radius)
     watch = EpisodeWatch(layout, Rules(yard.robot, yard.floor, yard.arrival, limit), crowd)
@@ -54,7 +55,7 @@ def test_a_session_and_the_batch_agree_on_every_episode(grade: str) -> None:
 
     Moving carts are left out: their velocities are given in the batch and tracked in a session.
     """
-    layouts = draw_many(YARD, grade, 25, seed=7)
+    layouts = draw_many(YARD, grade, 12, seed=7)
     batch = simulate(YARD, grade, layouts, [DEFAULTS])
     for column, layout in enumerate(layouts):
         outcome, expected = run_as_nodes_do(YARD, layout, YARD.grade(grade).time_limit), batch.outcome(0, column)
@@ -68,7 +69,7 @@ def test_a_tampered_plant_is_the_batchs_plant() -> None:
         update={"accel_scale": 0.6, "command_delay": 0.06, "wheel_mismatch": 0.08, "slip": 0.1}
     )
     yard = YARD.model_copy(update={"plant": plant})
-    layouts = draw_many(yard, "empty", 10, seed=3)
+    layouts = draw_many(yard, "empty", 6, seed=3)
     batch = simulate(yard, "empty", layouts, [DEFAULTS])
     for column, layout in enumerate(layouts):
         outcome, expected = run_as_nodes_do(yard, layout, 5.0), batch.outcome(0, column)
