@@ -15,7 +15,13 @@ fi
 
 result=0
 ruff check . || result=1
-mypy || result=1
+# The annotations are checked against numpy's own, which are others in the versions for Python 3.10 and in most ROS
+# installations.
+if python -c 'import numpy, sys; sys.exit(tuple(map(int, numpy.__version__.split(".")[:2])) < (2, 4))'; then
+    mypy || result=1
+else
+    say "types are not checked here: that takes numpy 2.4 or later"
+fi
 [ "$result" -eq 0 ] || say "ruff or mypy found faults (above); running the tests all the same"
 pytest "$@" || result=$?
 exit "$result"
