@@ -32,7 +32,7 @@ EXTRAS = {
     "report": ["matplotlib", "jinja2", "markupsafe"],
     "pit": ["rich"],
     "cluster": ["distributed"],
-    "benchmark": ["coco-experiment", "numba"],
+    "benchmark": ["coco-experiment", "numba", "optuna", "pymunk"],
     # colcon-core 0.x calls `setup.py develop --editable`, which setuptools 80 took away.
     "colcon": ["colcon-common-extensions", "setuptools>=70.1,<80"],
 }
@@ -40,6 +40,7 @@ EXTRAS["test"] = [
     *EXTRAS["bags"],
     *EXTRAS["report"],
     *EXTRAS["pit"],
+    *EXTRAS["cluster"],
     "pytest>=8",
     "hypothesis",
     "jsonschema",
