@@ -16,10 +16,11 @@ from fieldnav_ros.prepare.progress import Progress
 from fieldnav_ros.prepare.workers import DaskCluster, InPlace, LocalProcesses, Workers
 from fieldnav_ros.tuning.events import About, Event, SessionBegun, SessionConfig
 from fieldnav_ros.tuning.ledger import Ledger
-from fieldnav_ros.tuning.pretune import MODEL, Work, pretune, pretune_config, session_on
+from fieldnav_ros.tuning.pretune import MODEL, pretune, pretune_config, session_on
 from fieldnav_ros.tuning.session import Session
 from fieldnav_ros.tuning.space import dump_prior
 from fieldnav_ros.world.batch import BatchResult
+from fieldnav_ros.world.work import Work
 from fieldnav_ros.yard import Yard, load_yard
 
 

@@ -13,8 +13,8 @@ from typing import Any, Protocol
 
 from fieldnav_ros import __version__
 from fieldnav_ros.errors import WorkError
-from fieldnav_ros.tuning.pretune import Work
 from fieldnav_ros.world.batch import BatchResult
+from fieldnav_ros.world.work import Work
 
 TRIES = 3
 CONNECT_S = 30.0
@@ -49,6 +49,11 @@ class InPlace:
         pass
 
 
+def run_here(work: Work) -> BatchResult:
+    """Run a part of a work in the process that it has been sent to."""
+    return work.run()
+
+
 class LocalProcesses:
     """Processes on this machine, started anew rather than forked, so that they share nothing by accident."""
 
@@ -61,7 +66,7 @@ class LocalProcesses:
         """Run the parts; where a process was killed, all of them again in new ones, as nothing of them was stored."""
         for _ in range(TRIES):
             try:
-                return list(self._started().map(Work.run, work.parts(self._number)))
+                return list(self._started().map(run_here, work.parts(self._number)))
             except BrokenProcessPool:
                 self._stop()
         raise WorkError(f"worker processes were lost {TRIES} times in a row; is there enough memory for them?")

@@ -8,21 +8,18 @@ the outcomes are the same, bit for bit.
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from itertools import pairwise
-from typing import NamedTuple
 
 import numpy as np
 
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.guide import MODELS
-from fieldnav_ros.model import Layout, Outcome
-from fieldnav_ros.parameters import ParameterSet
+from fieldnav_ros.model import Outcome
 from fieldnav_ros.tuning.config import LEAST_EPISODES, SessionConfig, Stage
 from fieldnav_ros.tuning.events import Episode, Event
 from fieldnav_ros.tuning.session import Report, Session
 from fieldnav_ros.world import layouts
-from fieldnav_ros.world.batch import BatchResult, simulate
-from fieldnav_ros.world.plants import plant_of
+from fieldnav_ros.world.batch import BatchResult
+from fieldnav_ros.world.work import Work
 from fieldnav_ros.yard import Yard
 
 MODEL = MODELS[0]
@@ -31,26 +28,6 @@ LAYOUTS = (8, 32)
 """Layouts in a generation: few where the budget is small, so that there are generations enough."""
 GENERATIONS = 75
 VERDICT_SHARE = 0.1
-
-
-class Work(NamedTuple):
-    """Sets to run on layouts of one grade; ``whole`` says how to run it, ``parts`` how to share it out."""
-
-    yard: Yard
-    grade: str
-    time_limit: float
-    layouts: tuple[Layout, ...]
-    sets: tuple[ParameterSet, ...]
-
-    def parts(self, number: int) -> list[Work]:
-        """Return the work in at most ``number`` parts of about the same size: some of the layouts each."""
-        edges = np.linspace(0, len(self.layouts), min(number, len(self.layouts)) + 1).round().astype(int)
-        return [self._replace(layouts=self.layouts[first:last]) for first, last in pairwise(edges)]
-
-    def run(self) -> BatchResult:
-        """Run it in this process."""
-        plants = [plant_of(self.yard, layout) for layout in self.layouts]
-        return simulate(self.yard, self.grade, self.layouts, self.sets, plants, MODEL, self.time_limit)
 
 
 Runner = Callable[[Work], Sequence[BatchResult]]
@@ -92,7 +69,7 @@ def work_of(yard: Yard, session: Session, episodes: Sequence[Episode]) -> Work:
     sets = {episode.set_id: episode.parameters for episode in episodes}
     places = {episode.layout.seed: episode.layout for episode in episodes}
     stage = session.state.stage
-    return Work(yard, stage.grade, stage.time_limit, tuple(places.values()), tuple(sets.values()))
+    return Work(yard, stage.grade, stage.time_limit, tuple(places.values()), tuple(sets.values()), MODEL)
 
 
 def _outcomes(work: Work, results: Sequence[BatchResult], episodes: Sequence[Episode]) -> list[Outcome]:

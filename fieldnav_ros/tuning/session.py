@@ -136,6 +136,7 @@ class Session:
             events = work._followed([work._report(report)])
             work.apply(*events)
             result += events
+        self._engine, self._engine_stage = work._engine, work._engine_stage
         return result
 
     def void(self, episode_id: int | None = None, source: str = "operator") -> list[Event]:
