@@ -34,6 +34,10 @@ def clock(monkeypatch: pytest.MonkeyPatch) -> Clock:
     return clock
 
 
+def unexpected(error: Exception) -> None:
+    pytest.fail(f"a fault reached the script's caller: {error!r}")
+
+
 def waiter(future: Future, seen: list[object], seconds: float | None = 1.0) -> Steps:
     try:
         seen.append((yield Wait(future, seconds)))
@@ -46,7 +50,7 @@ def waiter(future: Future, seen: list[object], seconds: float | None = 1.0) -> S
 def test_result_of_a_future_reaches_the_step_that_waits_for_it(clock: Clock) -> None:
     seen: list[object] = []
     future = Future()
-    script = Script(pytest.fail)
+    script = Script(unexpected)
     script.start(waiter(future, seen))
     assert script.running
     assert seen == []
@@ -57,7 +61,7 @@ def test_result_of_a_future_reaches_the_step_that_waits_for_it(clock: Clock) -> 
 
 def test_step_is_told_when_its_time_is_up_and_not_before(clock: Clock) -> None:
     seen: list[object] = []
-    script = Script(pytest.fail)
+    script = Script(unexpected)
     script.start(waiter(Future(), seen, 1.0))
     clock.now += 0.9
     script.tick()
@@ -69,7 +73,7 @@ def test_step_is_told_when_its_time_is_up_and_not_before(clock: Clock) -> None:
 
 def test_wait_without_limit_outlasts_any_clock(clock: Clock) -> None:
     seen: list[object] = []
-    script = Script(pytest.fail)
+    script = Script(unexpected)
     script.start(waiter(Future(), seen, None))
     clock.now += 1e9
     script.tick()
@@ -80,7 +84,7 @@ def test_late_future_of_dropped_steps_is_not_taken_for_the_new_ones(clock: Clock
     old, new = Future(), Future()
     first: list[object] = []
     second: list[object] = []
-    script = Script(pytest.fail)
+    script = Script(unexpected)
     script.start(waiter(old, first))
     script.start(waiter(new, second))
     assert first == ["left"]
@@ -93,7 +97,7 @@ def test_late_future_of_dropped_steps_is_not_taken_for_the_new_ones(clock: Clock
 def test_steps_may_start_others_in_their_place(clock: Clock) -> None:
     seen: list[object] = []
     future = Future()
-    script = Script(pytest.fail)
+    script = Script(unexpected)
 
     def replaced() -> Steps:
         script.start(waiter(future, seen))
@@ -117,7 +121,7 @@ def test_error_of_a_future_is_raised_in_the_step(clock: Clock) -> None:
         except ValueError as error:
             seen.append(str(error))
 
-    Script(pytest.fail).start(steps())
+    Script(unexpected).start(steps())
     future.set_exception(ValueError("no"))
     assert seen == ["no"]
 
@@ -138,7 +142,7 @@ def test_fault_that_leaves_the_steps_reaches_the_owner_and_ends_them(clock: Cloc
 
 def test_many_futures_that_are_done_already_do_not_pile_up(clock: Clock) -> None:
     count = 0
-    script = Script(pytest.fail)
+    script = Script(unexpected)
 
     def steps() -> Steps:
         nonlocal count
