@@ -6,15 +6,17 @@ from collections.abc import Iterable
 from dataclasses import dataclass
 from typing import Any
 
-from rcl_interfaces.msg import FloatingPointRange, ParameterDescriptor
+from rcl_interfaces.msg import FloatingPointRange, IntegerRange, ParameterDescriptor
 from rclpy.node import Node
 from rclpy.parameter import Parameter as RosParameter
 
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.parameters import TABLE
 
-Value = bool | float | str | list[str]
-_KINDS: dict[type, str] = {bool: "true or false", float: "a decimal number", str: "a text", list: "a list of texts"}
+Value = bool | int | float | str | list[str]
+_KINDS: dict[type, str] = {
+    bool: "true or false", int: "a whole number", float: "a number", str: "a text", list: "a list of texts",
+}  # fmt: skip
 _NOT_OURS = ("use_sim_time", "start_type_description_service", "qos_overrides.")
 
 
@@ -33,25 +35,25 @@ class Setting:
     def check(self, value: object) -> None:
         """Raise InputError unless the value is of the right kind and within its bounds."""
         kind = type(self.default)
-        right = isinstance(value, kind) if kind is not list else isinstance(value, (list, tuple))
-        if kind is float and isinstance(value, float):
-            if not self.low <= value <= self.high:
-                raise InputError.of(self.name, value, f"from {self.low:g} to {self.high:g}")
-        elif not right:
+        right = isinstance(value, (list, tuple)) if kind is list else isinstance(value, kind)
+        if not right or (kind is int and isinstance(value, bool)):
             raise InputError.of(self.name, value, _KINDS[kind])
+        if isinstance(value, (int, float)) and kind in (int, float) and not self.low <= value <= self.high:
+            raise InputError.of(self.name, value, f"from {self.low:g} to {self.high:g}")
         if self.choices and value not in self.choices:
             raise InputError.of(self.name, value, "one of " + ", ".join(self.choices))
 
     def descriptor(self) -> ParameterDescriptor:
         """Return the descriptor by which ROS tools know meaning and range."""
         extra = "one of " + ", ".join(self.choices) if self.choices else ""
-        bounded = isinstance(self.default, float)
+        kind = type(self.default)
         return ParameterDescriptor(
             name=self.name,
             description=self.meaning,
             additional_constraints=extra,
             read_only=not self.live,
-            floating_point_range=[FloatingPointRange(from_value=self.low, to_value=self.high)] if bounded else [],
+            floating_point_range=[FloatingPointRange(from_value=self.low, to_value=self.high)] * (kind is float),
+            integer_range=[IntegerRange(from_value=int(self.low), to_value=int(self.high))] * (kind is int),
         )
 
 

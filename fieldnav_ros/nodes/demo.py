@@ -87,8 +87,8 @@ def _graph(files: Files, floor_time_min: float, seed: int) -> Iterator[tuple[Pro
     environment = domain.environment()
     os.environ.update(environment)
     tuner = {
-        "ledger": files.ledger, "champion_file": files.champion, "floor_time": float(floor_time_min),
-        "seed": float(seed), "grade": GRADE, "floor_clock": "episode",
+        "ledger": files.ledger, "champion_file": files.champion, "floor_time": floor_time_min,
+        "seed": seed, "grade": GRADE, "floor_clock": "episode",
     }  # fmt: skip
     context = Context()
     with Processes(environment) as processes:

@@ -60,10 +60,11 @@ SETTINGS = (
     Setting("initial", "", "ROS parameter file with the set to begin with; empty: the table's defaults"),
     Setting("guidance", "guidance_node", "name of the guidance node, relative to this node's namespace"),
     Setting("grade", "moving", "grade of the yard that layouts are drawn from"),
-    Setting("seed", 0.0, "seed of everything random in the session (a whole number)", 0.0, 2.0**31),
+    Setting("seed", 0, "seed of everything random in the session", 0, 2**31),
     Setting("floor_time", 20.0, "floor time that the session may use, in min, resets included", 0.1, 10_000.0),
     Setting("floor_clock", "wall", "wall: floor time as the clock runs; episode: the outcomes' own times and the "
             "yard's reset time, for simulators that are not paced", choices=("wall", "episode")),
+    Setting("rounds", 1, "most verdicts in the session; more share the 5 % error among them", 1, 16),
     Setting("begin", False, "begin at once, without waiting for the service ~/begin"),
     Setting("outcome_deadline", 10.0, "s of waiting beyond the time limit, before an episode is run again", 0.5, 600.0),
 )  # fmt: skip
@@ -117,10 +118,11 @@ class TunerNode(FieldnavNode):
 
     def _open_session(self) -> None:
         config = SessionConfig(
-            seed=int(self.settings["seed"]),
+            seed=self.settings["seed"],
             floor_time_s=60.0 * self.settings["floor_time"],
             grade=self.settings["grade"],
             time_limit=self.time_limit,
+            rounds=self.settings["rounds"],
             reset_guess_s=self.yard.reset_time,
         )
         self.session.apply(*self.ledger.events())

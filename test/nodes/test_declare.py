@@ -13,7 +13,7 @@ import yaml
 pytest.importorskip("rclpy", reason="starts real nodes")
 
 from fieldnav_ros.errors import InputError
-from fieldnav_ros.nodes import guidance_settings, judge_node, simulator_node
+from fieldnav_ros.nodes import guidance_settings, judge_node, simulator_node, tuner_node
 from fieldnav_ros.nodes.declare import Setting, tunable_settings
 from fieldnav_ros.parameters import TABLE
 
@@ -22,6 +22,7 @@ TABLES: dict[str, tuple[Setting, ...]] = {
     "guidance": guidance_settings.SETTINGS,
     "simulator": simulator_node.SETTINGS,
     "judge": judge_node.SETTINGS,
+    "tuner": tuner_node.SETTINGS,
 }
 
 
@@ -67,6 +68,9 @@ def test_tunable_settings_are_the_table() -> None:
         (Setting("a", 1.0, "", 0.0, 2.0), "1.0"),
         (Setting("a", 1.0, "", 0.0, 2.0), True),
         (Setting("a", True, ""), 1),
+        (Setting("a", 1, "", 0, 2), 3),
+        (Setting("a", 1, "", 0, 2), 1.5),
+        (Setting("a", 1, "", 0, 2), True),
         (Setting("a", "x", "", choices=("x", "y")), "z"),
         (Setting("a", [""], ""), "x"),
     ],
@@ -86,6 +90,9 @@ BAD = [
     ("simulator_node", ["-p", "mode:=fast"], "mode is 'fast'"),
     ("simulator_node", ["-p", "stamped_cmd:=false"], "stamped_cmd"),
     ("judge_node", ["-p", "reliable:=3"], "reliable is 3"),
+    ("tuner_node", ["-p", "seed:=1.5"], "seed is 1.5, must be a whole number"),
+    ("tuner_node", ["-p", "grade:=wild", "-p", "floor_time:=12"], "grade in yard 'parcel yard' is 'wild'"),
+    ("tuner_node", ["-p", "initial:=missing.yaml"], "missing.yaml"),
 ]
 
 

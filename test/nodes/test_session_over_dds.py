@@ -54,7 +54,7 @@ def start(processes: Processes, node: str, folder: Path, **more: object) -> None
     if node == "tuner_node":
         own = {
             "ledger": folder / "session.ledger", "champion_file": folder / "champion.yaml",
-            "floor_time": FLOOR_TIME, "seed": 5.0, **more,
+            "floor_time": FLOOR_TIME, "seed": 5, **more,
         }  # fmt: skip
     files = [config_path(f"{node.removesuffix('_node')}.yaml"), config_path("lockstep.yaml")]
     processes.start(node, own, files)
