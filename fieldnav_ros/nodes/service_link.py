@@ -11,10 +11,12 @@ from rcl_interfaces.srv import GetParameters, SetParametersAtomically
 from rclpy.node import Node
 
 from fieldnav_ros.errors import WorkError
+from fieldnav_ros.guide import DEFAULT_MODEL
 from fieldnav_ros.nodes.script import LateError, Wait
 from fieldnav_ros.parameters import TABLE, ParameterSet
 
 NAMES = [row.ros_name for row in TABLE]
+MODEL = "field.model"
 Values = tuple[float, ...]
 
 
@@ -28,6 +30,7 @@ class ServiceLink:
     def __init__(self, node: Node, guidance: str, patience: float) -> None:
         """``guidance``: name of the node, relative to ``node``'s namespace; ``patience``: s to wait for an answer."""
         self._name, self._patience = guidance, patience
+        self.model = DEFAULT_MODEL
         self._set = node.create_client(SetParametersAtomically, f"{guidance}/set_parameters_atomically")
         self._get = node.create_client(GetParameters, f"{guidance}/get_parameters")
 
@@ -36,11 +39,15 @@ class ServiceLink:
         return bool(self._set.service_is_ready() and self._get.service_is_ready())
 
     def read(self, patience: float | None = None) -> Generator[Wait, Any, Values]:
-        """Return the nine values as guidance holds them, in table order. LateError where it does not answer."""
-        answer = yield from self._call(self._get, GetParameters.Request(names=NAMES), patience)
-        values = tuple(value.double_value for value in answer.values)
-        if len(values) != len(NAMES):
+        """Return the nine values as guidance holds them, in table order. LateError where it does not answer.
+
+        ``model`` is then the field that they belong to.
+        """
+        answer = yield from self._call(self._get, GetParameters.Request(names=[*NAMES, MODEL]), patience)
+        values = tuple(value.double_value for value in answer.values[: len(NAMES)])
+        if len(answer.values) != len(NAMES) + 1:
             raise WorkError(f"{self._name} holds {len(values)} of the {len(NAMES)} numbers; is it a guidance node?")
+        self.model = answer.values[-1].string_value
         return values
 
     def put(self, parameters: ParameterSet, patience: float | None = None) -> Generator[Wait, Any, None]:

@@ -20,7 +20,7 @@ from std_srvs.srv import Trigger
 
 from fieldnav_ros import __version__
 from fieldnav_ros.errors import FieldnavError, InputError
-from fieldnav_ros.guide import MODELS
+from fieldnav_ros.guide import DEFAULT_MODEL
 from fieldnav_ros.model import Layout
 from fieldnav_ros.nodes.base import ERROR, LATCHED, OK, RELIABLE, WARN, YARD, FieldnavNode, run, yard_of
 from fieldnav_ros.nodes.convert import pose_message
@@ -35,7 +35,7 @@ from fieldnav_ros.nodes.payloads import (
 )  # fmt: skip
 from fieldnav_ros.nodes.script import LateError, Script, Wait
 from fieldnav_ros.nodes.service_link import RefusedError, ServiceLink
-from fieldnav_ros.parameters import DEFAULTS
+from fieldnav_ros.parameters import DEFAULTS, ParameterSet
 from fieldnav_ros.params_file import read_parameters, write_parameters
 from fieldnav_ros.tuning.events import About, Episode, Event, SessionConfig
 from fieldnav_ros.tuning.ledger import Ledger
@@ -88,8 +88,9 @@ class TunerNode(FieldnavNode):
         self.time_limit = self.yard.grade(settings["grade"]).time_limit
         self.ledger = Ledger.open(settings["ledger"])
         self.session = Session(self._draw)
-        self._open_session()
         self.link = ServiceLink(self, settings["guidance"], PATIENCE)
+        self._model_written = self.link.model
+        self._open_session()
         self._goal = self.create_publisher(PoseStamped, "goal", LATCHED)
         self._request = self.create_publisher(String, "episode/request", LATCHED)
         self._status = self.create_publisher(String, "tuner/status", LATCHED)
@@ -128,7 +129,7 @@ class TunerNode(FieldnavNode):
         self.session.apply(*self.ledger.events())
         if not self.session.begun:
             initial = read_parameters(self.settings["initial"]) if self.settings["initial"] else DEFAULTS
-            about = About(software=f"fieldnav_ros {__version__}", model=MODELS[0], yard=self.yard)
+            about = About(software=f"fieldnav_ros {__version__}", model=DEFAULT_MODEL, yard=self.yard)
             self.commit(self.session.begin(config, initial, about=about))
             return
         if self.session.config != config:
@@ -151,7 +152,8 @@ class TunerNode(FieldnavNode):
     def _write_champion(self) -> None:
         champion = self.session.champion
         about = f"Champion {champion.set_id} of the session in {Path(self.settings['ledger']).name}."
-        write_parameters(Path(self.settings["champion_file"]), champion.parameters, about, MODELS[0])
+        self._model_written = self.link.model
+        write_parameters(Path(self.settings["champion_file"]), champion.parameters, about, self.link.model)
 
     # -- the work, one step after another
 
@@ -197,7 +199,7 @@ class TunerNode(FieldnavNode):
         self._running = None
         self._record(episode, report)
 
-    def _put(self, set_id: str, parameters: Any) -> Generator[Wait, Any, bool]:
+    def _put(self, set_id: str, parameters: ParameterSet) -> Generator[Wait, Any, bool]:
         """Put a set in service and confirm it; False where that must be tried again."""
         try:
             if self._confirmed and (yield from self.link.read()) != self._last_values:
@@ -215,8 +217,13 @@ class TunerNode(FieldnavNode):
             self._confirmed = ""
             self.warn("guidance_silent", f"{self.settings['guidance']} does not answer; asking again")
             return False
-        self._confirmed, self._last_values = set_id, tuple(parameters.to_ros().values())
+        self._confirm(set_id, parameters)
         return True
+
+    def _confirm(self, set_id: str, parameters: ParameterSet) -> None:
+        self._confirmed, self._last_values = set_id, tuple(parameters.to_ros().values())
+        if self.link.model != self._model_written:
+            self._write_champion()  # the same numbers mean something else to another field
 
     def _in_service(self) -> Generator[Wait, Any, None]:
         """See to it that the champion is in service, however long guidance takes to be there."""
@@ -350,7 +357,7 @@ class TunerNode(FieldnavNode):
             yield from self.link.put(champion.parameters, patience=max(TICK, end - time.monotonic()))
         except (RefusedError, LateError):
             return False
-        self._confirmed, self._last_values = champion.set_id, tuple(champion.parameters.to_ros().values())
+        self._confirm(champion.set_id, champion.parameters)
         return True
 
     def _spend_until_now(self, why: str) -> None:

@@ -12,7 +12,7 @@ from collections.abc import Callable, Sequence
 import numpy as np
 
 from fieldnav_ros.errors import InputError
-from fieldnav_ros.guide import MODELS
+from fieldnav_ros.guide import DEFAULT_MODEL
 from fieldnav_ros.model import Outcome
 from fieldnav_ros.tuning.config import LEAST_EPISODES, SessionConfig, Stage
 from fieldnav_ros.tuning.events import Episode, Event
@@ -22,7 +22,7 @@ from fieldnav_ros.world.batch import BatchResult
 from fieldnav_ros.world.work import Work
 from fieldnav_ros.yard import Yard
 
-MODEL = MODELS[0]
+MODEL = DEFAULT_MODEL
 POPULATION = 16
 LAYOUTS = (8, 32)
 """Layouts in a generation: few where the budget is small, so that there are generations enough."""
