@@ -13,7 +13,7 @@ from matplotlib.patches import Circle, Rectangle
 
 from fieldnav_ros.field.avoidance import Obstacles
 from fieldnav_ros.guide import Memory, Senses, guide
-from fieldnav_ros.model import Layout, OutcomeKind, Pose
+from fieldnav_ros.model import Layout, Obstacle, OutcomeKind, Pose
 from fieldnav_ros.parameters import FloatArray, ParameterSet, stack
 from fieldnav_ros.report.replay import FloorTrack
 from fieldnav_ros.report.style import AFTER, BEFORE, INK, LOOKS, SOFT, WORDS, key_above, new_figure, styled
@@ -21,6 +21,8 @@ from fieldnav_ros.yard import Yard
 
 ARROWS = 26
 """Arrows along the longer side of the floor."""
+AHEAD = 0.5
+"""Seconds of a cart's way that its arrow shows."""
 
 
 @dataclass(frozen=True)
@@ -100,7 +102,7 @@ def field(
             axes.add_patch(Circle((cart.x, cart.y), cart.radius, facecolor="#c9ced2", edgecolor=INK, linewidth=0.9))
             axes.annotate(
                 "",
-                (cart.x + cart.vx, cart.y + cart.vy),
+                _ahead(cart, yard),
                 (cart.x, cart.y),
                 annotation_clip=False,
                 arrowprops={"arrowstyle": "->", "color": INK, "linewidth": 1.0, "shrinkA": 0, "shrinkB": 0},
@@ -108,6 +110,13 @@ def field(
         _pose(axes, layout.start, yard.robot.radius, INK, "white")
         _pose(axes, layout.goal, yard.robot.radius, INK, INK)
     return figure
+
+
+def _ahead(cart: Obstacle, yard: Yard) -> tuple[float, float]:
+    """Return where a cart heads in AHEAD seconds, at the farthest the wall."""
+    (low_x, high_x), (low_y, high_y) = yard.floor.x, yard.floor.y
+    x, y = cart.x + AHEAD * cart.vx, cart.y + AHEAD * cart.vy
+    return min(max(x, low_x), high_x), min(max(y, low_y), high_y)
 
 
 def headings(

@@ -9,6 +9,7 @@ from typing import Any
 from jinja2 import Environment, FileSystemLoader, StrictUndefined
 from markupsafe import Markup
 
+from fieldnav_ros.errors import clipped
 from fieldnav_ros.report import captioned, captioned_floor, provenance, tables, wording
 from fieldnav_ros.report.drift import drift
 from fieldnav_ros.report.facts import Facts
@@ -17,6 +18,7 @@ from fieldnav_ros.report.scenes import Ground, Tracks, failure_scene, field_scen
 from fieldnav_ros.report.values import Cite, Name, Sentence, Value, share, whole
 
 TEMPLATES = Path(__file__).resolve().parent / "template"
+LONGEST_TEXT = 400
 POLICY = "default-src 'none'; style-src 'unsafe-inline'; base-uri 'none'; form-action 'none'"
 
 
@@ -30,6 +32,7 @@ def render(record: Record, others: Iterable[Record] = (), tracks: Tracks | None 
         lstrip_blocks=True,
     )
     environment.filters["say"] = say
+    environment.filters["cut"] = lambda text: clipped(text, LONGEST_TEXT)
     context = _context(record, [record, *others], tracks or {})
     return environment.get_template("report.html").render(**context)
 

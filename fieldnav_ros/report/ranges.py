@@ -18,7 +18,7 @@ from fieldnav_ros.report.values import bound, figures, title_of, unit_of
 
 def whole_ticks(axes: Axes, which: str = "x", most: int = 6) -> None:
     """Put ticks at whole numbers only."""
-    getattr(axes, f"{which}axis").set_major_locator(MaxNLocator(most, integer=True))
+    getattr(axes, f"{which}axis").set_major_locator(MaxNLocator(most, integer=True, min_n_ticks=1))
 
 
 def champion(before: NamedValues, other: NamedValues, accepted: bool) -> Figure:

@@ -31,7 +31,6 @@ class Zoo:
                 self._pages[name] = render(read_record(self[name]))
         return self._pages[name]
 
-
     def drawn_page(self) -> str:
         """Return a whole page with every kind of figure, with another session beside it."""
         if "drawn" not in self._pages:

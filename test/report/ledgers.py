@@ -178,6 +178,18 @@ def troubled() -> list[Event]:
     return log
 
 
+def verdict_taken_back() -> list[Event]:
+    """Return a session whose accepting pair was voided: what followed from it is gone, the round is open again."""
+    session, log = begun(small(seed=2, minutes=30.0))
+    runner = made_up(failing=0.0, gain=3.5)
+    while not any(event.kind == "champion_changed" for event in log):
+        drive(session, log, runner, at_most=1)
+    keep(session, log, session.void(source="marshal"))
+    void = Outcome(kind=OutcomeKind.VOID, time=1.5)
+    keep(session, log, session.record(session.pending()[0].id, void, 3.5, "/judge_node"))
+    return log
+
+
 def without_about() -> list[Event]:
     yard = parcel_yard()
     session, log = session_of(yard), list[Event]()
@@ -230,6 +242,7 @@ ZOO: dict[str, Callable[[], list[Event]]] = {
     "kept": kept,
     "accepted": accepted,
     "troubled": troubled,
+    "verdict_taken_back": verdict_taken_back,
     "without_about": without_about,
     "curriculum": curriculum,
     "huge_evidence": huge_evidence,
