@@ -114,7 +114,8 @@ def guide(
         robots = Robots(x, y, yaw, memory.left, memory.right, _apart(x, y, goal))
         course, side = guidance_course(robots, goal, obstacles, numbers, robot, floor, habit)
         heading, v, w = _follow(course, robots, numbers, robot)
-        habit = Habit(side, np.cos(heading), np.sin(heading), habit.waited)
+        way = np.where(course.pace < 0.0, -1.0, 1.0)
+        habit = Habit(side, way * np.cos(heading), way * np.sin(heading), habit.waited)
     left, right = limit_wheels(v, w, robot)
     most = robot.wheel_accel * dt
     left, right = limit_change(left, memory.left, most), limit_change(right, memory.right, most)

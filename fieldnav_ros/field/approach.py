@@ -20,6 +20,8 @@ HALF_TURN = np.pi / 2
 FULL_TURN = 2 * np.pi
 OVERSHOT = 0.3
 """Arcs within this angle (rad) of a full turn are none: the robot is past the tangent point by a hair."""
+TIGHTEST = 0.03
+"""Smallest turning radius (m) that a circle is shrunk to, for lack of room or from inside it."""
 SHARPEST = 30.0
 """Largest slope (rad/m) of the tangent field towards its circle; at the circle itself it has none."""
 
@@ -64,6 +66,17 @@ def approach_heading(x: ArrayLike, y: ArrayLike, turn_radius: ArrayLike, turn_so
     along, across = approach_vector(np.asarray(x, float), np.asarray(y, float),
                                     np.asarray(turn_radius, float), np.asarray(turn_softness, float))  # fmt: skip
     return np.arctan2(across, along)
+
+
+def open_radius(x: Any, y: Any, side: Any, turn_radius: Any) -> Any:
+    """Return the turning radius (m) for a robot at x, y: d_e, or less where it is inside that circle.
+
+    From inside no straight line leads to a circle. The one that takes its place passes through the robot and through
+    the goal in the goal's heading: r = (x^2 + y^2) / 2|y|; not below ``TIGHTEST``.
+    """
+    across = side * y
+    through = (x * x + y * y) / np.maximum(2.0 * across, 1e-9)
+    return np.where(across > 0.0, np.minimum(turn_radius, np.maximum(through, TIGHTEST)), turn_radius)
 
 
 def way_left(x: Any, y: Any, side: Any, turn_radius: Any) -> Any:

@@ -23,7 +23,8 @@ from fieldnav_ros.yard import Floor
 LOOKS = 3
 """Looks into the time ahead, evenly spread."""
 HOMING_PACE = 0.7
-"""Share of the largest speed at which the goal bounds the time ahead: what lies beyond it does not matter."""
+"""Share of the largest speed at which the goal and a robot's length bound the time ahead: what is beyond does not
+matter."""
 MARGIN = 0.01
 """Gap in m below which a course counts as one that touches."""
 
@@ -65,21 +66,106 @@ class Robots(NamedTuple):
         return Robots(*(part[rows] for part in self))
 
 
-def look_ahead(
-    robots: Robots, course: Course, obstacles: Obstacles, numbers: Numbers, robot: Robot, floor: Floor | None
-) -> Ahead:
-    """Drive each course ahead for ``motion_lead`` seconds, or as long as the goal is away, and say what comes of it.
+class Zones(NamedTuple):
+    """Guard zones and edges of obstacles and walls at each look, seen from where each robot is now; single precision.
+
+    ``h``: seconds from look to look, (N,). Obstacles: places (m; (K, M, N)), and with a distance d to them
+    ``level - scale d^2`` is 0 at the outer edge of the guard zone and 1 at the inner, which needs no root; ``contact``
+    is the square of the distance that counts as touching (M, N). Walls: the way to each of the four (N,), empty without
+    a floor; ``wall_level - gap / fade`` as above; ``wall_contact`` in m.
+    """
+
+    h: Any
+    x: Any
+    y: Any
+    level: Any
+    scale: Any
+    contact: Any
+    walls: Any
+    wall_level: Any
+    per_fade: Any
+    wall_contact: float
+
+    @classmethod
+    def of(cls, robots: Robots, obstacles: Obstacles, numbers: Numbers, robot: Robot, floor: Floor | None) -> Zones:
+        """Look ``motion_lead`` seconds ahead, or as long as the goal is away.
+
+        Obstacles keep their velocity; they do not go through walls but are taken to be turned back by them.
+        """
+        lead, guard, fade = (
+            np.asarray(part, np.float32) for part in (numbers.motion_lead, numbers.guard_distance, numbers.guard_fade)
+        )
+        homing = (robots.distance + 2.0 * robot.radius) / (HOMING_PACE * robot.wheel_speed)
+        h = np.maximum(np.minimum(lead, homing.astype(np.float32)) / LOOKS, np.float32(1e-3))
+        radius = obstacles.radius.astype(np.float32)
+        inner = guard + (radius - robot.radius)
+        outer = inner + 2.0 * fade
+        scale = 1.0 / (outer * outer - inner * inner)
+        x = _places(obstacles.x, obstacles.vx, obstacles.radius, robots.x, h, floor.x if floor else None)
+        y = _places(obstacles.y, obstacles.vy, obstacles.radius, robots.y, h, floor.y if floor else None)
+        contact = np.square(radius + (robot.radius + MARGIN))
+        walls = np.empty((0, len(robots.x)), np.float32)
+        if floor is not None:
+            sides = (robots.x - floor.x[0], floor.x[1] - robots.x, robots.y - floor.y[0], floor.y[1] - robots.y)
+            walls = np.array(sides, np.float32)
+        # a wall is a disc of no size: what the guard distance keeps from an obstacle's centre, less the obstacle
+        per_fade = 1.0 / np.broadcast_to(fade, h.shape)
+        wall_level = (guard - robot.radius) * per_fade + 1.0
+        edge = (robot.radius if floor is None or floor.walled else 0.0) + MARGIN
+        return cls(h, x, y, outer * outer * scale, scale, contact, walls, wall_level, per_fade, edge)
+
+    def take(self, rows: Any) -> Zones:
+        """Return the zones of the rows that an index or mask picks."""
+        return Zones(*(part[..., rows] for part in self[:-1]), self.wall_contact)
+
+    def at(self, look: int, x: Any, y: Any) -> tuple[Any, Any]:
+        """Return how deep in a zone (0 to 1 and beyond) and whether touching, at a look, at x, y (m; (C, N))."""
+        deep: Any = np.float32(0.0)
+        touch: Any = False
+        if self.x.shape[1]:
+            square = x[:, None] - self.x[look]
+            square *= square
+            dy = y[:, None] - self.y[look]
+            dy *= dy
+            square += dy
+            touch = np.min(square - self.contact, axis=1) < 0.0
+            square *= self.scale
+            deep = np.max(self.level - square, axis=1)
+        if len(self.walls):
+            west, east, south, north = self.walls
+            gap = np.minimum(np.minimum(west + x, east - x), np.minimum(south + y, north - y))
+            deep = np.maximum(deep, self.wall_level - gap * self.per_fade)
+            touch = touch | (gap < self.wall_contact)
+        return deep, touch
+
+
+def _places(
+    place: Any, speed: Any, radius: Any, origin: Any, h: Any, side: tuple[float, float] | None
+) -> Any:
+    """Return one coordinate of the obstacles at each look, less ``origin``, (K, M, N)."""
+    looks = np.arange(1.0, LOOKS + 1.0, dtype=np.float32)[:, None, None]
+    places = (place - origin).astype(np.float32) + (looks * h) * speed.astype(np.float32)
+    if side is not None:
+        low, high = ((side[0] + radius) - origin).astype(np.float32), ((side[1] - radius) - origin).astype(np.float32)
+        for wall, sign in ((low, 1.0), (high, -1.0)):
+            places -= wall
+            np.abs(places, out=places)
+            places *= sign
+            places += wall
+    return places
+
+
+def look_ahead(robots: Robots, course: Course, zones: Zones, numbers: Numbers, robot: Robot) -> Ahead:
+    """Drive each course ahead to the last look of ``zones``, and say what comes of it.
 
     Reckoned in single precision about the robot's own place: a thought, not a command, and twice as fast.
     """
     numbers = Numbers(*(np.asarray(part, np.float32) for part in numbers))
-    distance = robots.distance.astype(np.float32)
-    lead = np.minimum(numbers.motion_lead, (distance + 0.02) / (HOMING_PACE * robot.wheel_speed))
-    h = np.maximum(lead / LOOKS, 1e-3)
-    bounds = _Zones(robots, obstacles, numbers, robot, floor)
     facing, bend, pace = (np.asarray(part, np.float32) for part in course)
-    yaw, left, right = (part.astype(np.float32) for part in (robots.yaw, robots.left, robots.right))
-    most, quarter, per_track, bend_size = robot.wheel_accel * h, 0.25 * h, 2.0 / robot.track, np.abs(bend)
+    yaw, left, right, distance = (np.asarray(part, np.float32) for part in robots[2:])
+    h = zones.h
+    most, quarter, bend_size = robot.wheel_accel * h, 0.25 * h, np.abs(bend)
+    turning = quarter * (2.0 / robot.track)
     x: Any = 0.0
     y: Any = 0.0
     crowding: Any = 0.0
@@ -94,58 +180,11 @@ def look_ahead(
         new_left, new_right = limit_change(v - half, left, most), limit_change(v + half, right, most)
         to_left, to_right = left + new_left, right + new_right
         left, right = new_left, new_right
-        travel = quarter * (to_left + to_right)
-        turned = (quarter * per_track) * (to_right - to_left)
+        travel, turned = quarter * (to_left + to_right), turning * (to_right - to_left)
         middle = yaw + 0.5 * turned
         x, y, yaw = x + travel * np.cos(middle), y + travel * np.sin(middle), yaw + turned
         facing = facing + bend * travel
-        crowd, touch = bounds.at(x, y, (look + 1) * h)
-        crowding = crowding + np.minimum(np.maximum(crowd, 0.0), 1.0)
-        touching = np.maximum(touching, np.where(touch, np.float32(1.5 - look / LOOKS), np.float32(0.0)))
+        deep, touch = zones.at(look, x, y)
+        crowding = crowding + np.minimum(np.maximum(deep, 0.0), 1.0)
+        touching = np.maximum(touching, touch * np.float32(1.5 - look / LOOKS))
     return Ahead(robots.x + x, robots.y + y, yaw, h * crowding, touching)
-
-
-class _Zones:
-    """Guard zones and edges of obstacles and walls, seen from where each robot is now, in single precision."""
-
-    def __init__(
-        self, robots: Robots, obstacles: Obstacles, numbers: Numbers, robot: Robot, floor: Floor | None
-    ) -> None:
-        self.x = (obstacles.x - robots.x).astype(np.float32)
-        self.y = (obstacles.y - robots.y).astype(np.float32)
-        self.vx, self.vy = obstacles.vx.astype(np.float32), obstacles.vy.astype(np.float32)
-        radius = obstacles.radius.astype(np.float32)
-        inner = numbers.guard_distance + (radius - robot.radius)
-        outer = inner + 2.0 * numbers.guard_fade
-        # (outer^2 - d^2) / (outer^2 - inner^2) is 0 at the outer edge, 1 at the inner, and needs no root
-        self.scale = 1.0 / (outer * outer - inner * inner)
-        self.level = outer * outer * self.scale
-        self.contact = np.square(radius + (robot.radius + MARGIN))
-        self.walls: Any = None
-        if floor is not None:
-            sides = (robots.x - floor.x[0], floor.x[1] - robots.x, robots.y - floor.y[0], floor.y[1] - robots.y)
-            self.walls = [side.astype(np.float32) for side in sides]
-            # a wall is a disc of no size: what the guard distance keeps from an obstacle's centre, less the obstacle
-            self.per_fade = 1.0 / numbers.guard_fade
-            self.wall_level = (numbers.guard_distance - robot.radius) * self.per_fade + 1.0
-            self.wall_contact = (robot.radius if floor.walled else 0.0) + MARGIN
-
-    def at(self, x: Any, y: Any, t: Any) -> tuple[Any, Any]:
-        """Return how deep in a guard zone (0 to 1 and beyond) and whether touching, ``t`` s from now at x, y (m)."""
-        deep: Any = np.float32(0.0)
-        touch: Any = False
-        if len(self.x):
-            dx = x[:, None] - (self.x + t * self.vx)
-            dy = y[:, None] - (self.y + t * self.vy)
-            dx *= dx
-            dy *= dy
-            dx += dy
-            touch = np.min(dx - self.contact, axis=1) < 0.0
-            dx *= self.scale
-            deep = np.max(self.level - dx, axis=1)
-        if self.walls is not None:
-            west, east, south, north = self.walls
-            gap = np.minimum(np.minimum(west + x, east - x), np.minimum(south + y, north - y))
-            deep = np.maximum(deep, self.wall_level - gap * self.per_fade)
-            touch = touch | (gap < self.wall_contact)
-        return deep, touch

@@ -7,9 +7,9 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from fieldnav_ros.drive import wrap
-from fieldnav_ros.field.approach import approach_vector, circle_course, way_left
+from fieldnav_ros.field.approach import TIGHTEST, approach_vector, circle_course, open_radius, way_left
 from fieldnav_ros.field.avoidance import Obstacles, guard_weight, nearest_repulsion
-from fieldnav_ros.field.foresight import Ahead, Course, Robots, look_ahead
+from fieldnav_ros.field.foresight import MARGIN, Ahead, Course, Robots, Zones, look_ahead
 from fieldnav_ros.model import Robot
 from fieldnav_ros.parameters import Numbers
 from fieldnav_ros.yard import Floor
@@ -54,7 +54,7 @@ class Goal(NamedTuple):
 
 
 class Habit(NamedTuple):
-    """What keeps the robot from dithering, each (N,): side of the circle, last course (unit vector), time waited (s).
+    """What keeps the robot from dithering, each (N,): side of the circle, last way driven (unit vector), time waited (s).
 
     ``side`` is +1, -1, or 0 where none has been taken yet; the course is (0, 0) before the first.
     """
@@ -80,23 +80,40 @@ def guidance_course(
     and backing, by the way left at the end and the crowding and touching until then. All obstacles and walls count.
     """
     x, y = goal.frame(robots.x, robots.y)
-    left, right = (way_left(x, y, side, numbers.turn_radius) for side in (1.0, -1.0))
+    radii = [open_radius(x, y, side, _roomy_radius(side, goal, numbers, robot, floor)) for side in (1.0, -1.0)]
+    left, right = (way_left(x, y, side, radius) for side, radius in zip((1.0, -1.0), radii))
     side = np.where(left - right < SIDE_STAYS * habit.side, 1.0, -1.0)
+    radius = np.where(side > 0.0, *radii)
     cos_yaw, sin_yaw = np.cos(robots.yaw), np.sin(robots.yaw)
     along, across = goal.cos * cos_yaw + goal.sin * sin_yaw, goal.cos * sin_yaw - goal.sin * cos_yaw
-    heading, bend = circle_course(x, y, side, numbers.turn_radius, numbers.turn_softness, along, across)
+    heading, bend = circle_course(x, y, side, radius, numbers.turn_softness, along, across)
     facing = wrap(heading + np.arctan2(goal.sin, goal.cos))
     course = Course(facing, bend, np.ones_like(facing))
     wanted = Course(facing[None], bend[None], 1.0)
-    ahead = look_ahead(robots, wanted, obstacles, numbers, robot, floor)
+    zones = Zones.of(robots, obstacles, numbers, robot, floor)
+    ahead = look_ahead(robots, wanted, zones, numbers, robot)
     troubled = np.flatnonzero(ahead.crowding[0] + ahead.touching[0] > 0.0)
     if troubled.size:
         _resolve(
-            course, troubled, robots.take(troubled), goal.take(troubled), obstacles.take(troubled),
-            Numbers(*(part[troubled] if np.ndim(part) else part for part in numbers)), robot, floor,
-            habit.take(troubled), side[troubled], Ahead(*(part[:, troubled] for part in ahead)),
+            course, troubled, robots.take(troubled), goal.take(troubled), zones.take(troubled),
+            Numbers(*(part[troubled] if np.ndim(part) else part for part in numbers)), robot,
+            habit.take(troubled), side[troubled], radius[troubled], Ahead(*(part[:, troubled] for part in ahead)),
         )  # fmt: skip
     return course, side
+
+
+def _roomy_radius(side: float, goal: Goal, numbers: Numbers, robot: Robot, floor: Floor | None) -> Any:
+    """Return d_e, or less where the circle on that side of the goal would not keep the guard distance from a wall."""
+    radius = numbers.turn_radius
+    if floor is None:
+        return radius
+    gap = np.maximum(numbers.guard_distance - robot.radius, robot.radius + MARGIN)
+    # from the goal the circle reaches r (1 + n) towards a wall, n the share of its centre's direction that way
+    toward_x, toward_y = -side * goal.sin, side * goal.cos
+    for place, toward, (low, high) in ((goal.x, toward_x, floor.x), (goal.y, toward_y, floor.y)):
+        radius = np.minimum(radius, (high - gap - place) / np.maximum(1.0 + toward, 1e-3))
+        radius = np.minimum(radius, (place - gap - low) / np.maximum(1.0 - toward, 1e-3))
+    return np.maximum(radius, TIGHTEST)
 
 
 def _resolve(
@@ -104,23 +121,24 @@ def _resolve(
     rows: Any,
     robots: Robots,
     goal: Goal,
-    obstacles: Obstacles,
+    zones: Zones,
     numbers: Numbers,
     robot: Robot,
-    floor: Floor | None,
     habit: Habit,
     side: Any,
+    radius: Any,
     ahead: Ahead,
 ) -> None:
     """Put the best of a few courses in place of the wanted one, for the rows where that one meets trouble."""
     facing = course.facing[rows]
     others = facing + numbers.sidestep * _STEPS
     candidates = np.concatenate([others, robots.yaw[None], robots.yaw[None]])
-    tried = look_ahead(robots, Course(candidates, 0.0, _PACES[1:]), obstacles, numbers, robot, floor)
+    tried = look_ahead(robots, Course(candidates, 0.0, _PACES[1:]), zones, numbers, robot)
     facings = np.concatenate([facing[None], candidates])
     ends = Ahead(*(np.concatenate(parts) for parts in zip(ahead, tried)))
-    length = way_left(*goal.frame(ends.x, ends.y), side, numbers.turn_radius)
+    length = way_left(*goal.frame(ends.x, ends.y), side, radius)
     same = habit.course_x * np.cos(facings) + habit.course_y * np.sin(facings)
+    same[-1] *= -1.0  # backing goes the other way
     price = length / robot.wheel_speed + CROWDED * ends.crowding + TOUCHED * ends.touching
     price -= COURSE_STAYS * (1.0 + WAITED * habit.waited) * same
     price[_STANDING] += habit.waited
