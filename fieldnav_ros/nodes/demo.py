@@ -20,6 +20,7 @@ from fieldnav_ros.nodes.processes import Domain, Processes
 from fieldnav_ros.nodes.tuner_node import SESSION_ENDED
 from fieldnav_ros.nodes.watch import Watch
 from fieldnav_ros.parameters import DEFAULTS
+from fieldnav_ros.report.command import write_report
 from fieldnav_ros.resources import config_path
 from fieldnav_ros.tuning.compare import unseen_costs
 from fieldnav_ros.tuning.ledger import Ledger
@@ -47,6 +48,11 @@ class Files:
     def champion(self) -> Path:
         """The set in service at the end, as a ROS parameter file."""
         return self.folder / "champion.yaml"
+
+    @property
+    def report(self) -> Path:
+        """The page about the session."""
+        return self.folder / "report.html"
 
 
 def run_demo(out: Path | None, floor_time_min: float, seed: int) -> dict[str, Any]:
@@ -89,6 +95,7 @@ def _graph(files: Files, floor_time_min: float, seed: int) -> Iterator[tuple[Pro
     tuner = {
         "ledger": files.ledger, "champion_file": files.champion, "floor_time": floor_time_min,
         "seed": seed, "grade": GRADE, "floor_clock": "episode",
+        "place": "simulation, the demo's parcel yard",
     }  # fmt: skip
     context = Context()
     with Processes(environment) as processes:
@@ -174,6 +181,7 @@ def _result(files: Files, seed: int, seconds: float) -> dict[str, Any]:
     default, tuned = unseen_costs(yard, GRADE, [DEFAULTS, champion.parameters], UNSEEN_LAYOUTS, seed)
     change = float(tuned.mean() / default.mean() - 1.0)
     episodes = int(session.summary()["episodes_done"] or 0)
+    report = _report(files)
     error = float((tuned - default).std(ddof=1) / math.sqrt(len(tuned)))
     print(
         f"\n{episodes} episodes in {seconds:.0f} s. Champion: {champion.set_id} ({reason}).\n"
@@ -181,9 +189,21 @@ def _result(files: Files, seed: int, seconds: float) -> dict[str, Any]:
         f"defaults\nto {tuned.mean():.2f} s with the champion ({change:+.0%}; standard error of the difference "
         f"{error:.2f} s).\n\n"
         f"{files.champion}   the champion, for --params-file\n{files.ledger}   every episode and decision"
+        + (f"\n{report}   the session on one page" if report else "")
     )
     return {
         "episodes": episodes, "cost_default": float(default.mean()), "cost_champion": float(tuned.mean()),
         "cost_change": change, "champion_set": champion.set_id, "seconds": round(seconds, 1), "seed": seed,
         "champion": str(files.champion), "ledger": str(files.ledger),
+        "report": str(report) if report else None,
     }  # fmt: skip
+
+
+def _report(files: Files) -> Path | None:
+    """Write the page; None, and a line that says why, where that cannot be done: the session is no less sound."""
+    try:
+        write_report(files.ledger, files.report)
+    except WorkError as error:
+        print(f"No report: {error}")
+        return None
+    return files.report

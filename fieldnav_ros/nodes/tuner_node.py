@@ -65,6 +65,7 @@ SETTINGS = (
     Setting("floor_clock", "wall", "wall: floor time as the clock runs; episode: the outcomes' own times and the "
             "yard's reset time, for simulators that are not paced", choices=("wall", "episode")),
     Setting("rounds", 1, "most verdicts in the session; more share the 5 % error among them", 1, 16),
+    Setting("place", "", "where the session is held, for the record"),
     Setting("begin", False, "begin at once, without waiting for the service ~/begin"),
     Setting("outcome_deadline", 10.0, "s of waiting beyond the time limit, before an episode is run again", 0.5, 600.0),
 )  # fmt: skip
@@ -129,7 +130,10 @@ class TunerNode(FieldnavNode):
         self.session.apply(*self.ledger.events())
         if not self.session.begun:
             initial = read_parameters(self.settings["initial"]) if self.settings["initial"] else DEFAULTS
-            about = About(software=f"fieldnav_ros {__version__}", model=DEFAULT_MODEL, yard=self.yard)
+            about = About(
+                software=f"fieldnav_ros {__version__}", model=DEFAULT_MODEL, yard=self.yard,
+                place=self.settings["place"],
+            )  # fmt: skip
             self.commit(self.session.begin(config, initial, about=about))
             return
         if self.session.config != config:
