@@ -123,14 +123,14 @@ class Zones(NamedTuple):
         deep: Any = np.float32(0.0)
         touch: Any = False
         if self.x.shape[1]:
-            square = x[:, None] - self.x[look]
+            square = x - self.x[look][:, None]
             square *= square
-            dy = y[:, None] - self.y[look]
+            dy = y - self.y[look][:, None]
             dy *= dy
             square += dy
-            touch = np.min(square - self.contact, axis=1) < 0.0
-            square *= self.scale
-            deep = np.max(self.level - square, axis=1)
+            touch = np.minimum.reduce(square - self.contact[:, None]) < 0.0
+            square *= self.scale[:, None]
+            deep = np.maximum.reduce(self.level[:, None] - square)
         if len(self.walls):
             west, east, south, north = self.walls
             gap = np.minimum(np.minimum(west + x, east - x), np.minimum(south + y, north - y))
