@@ -252,10 +252,12 @@ def fresh(node: GuidanceNode) -> Floor:
     node.pilot._start_anew()
     node.pilot._blind.clear()
     node._ended = ""
+    defaults = [Parameter(row.ros_name, value=row.default) for row in TABLE]
+    assert node.set_parameters_atomically(defaults).successful  # every example starts from the same node
     node.on_goal(pose_message(2.0, 0.8, 0.0, "map", floor.now))
     for _ in range(3):
         act(floor, "good_pose", (0.01, 0.0))
-    assert any(command[1] > 0.0 for command in floor.commands)
+    assert any(command[1:] != (0.0, 0.0) for command in floor.commands)
     floor.commands.clear()
     node.on_hold(Bool(data=True))
     node.on_hold(Bool(data=False))
