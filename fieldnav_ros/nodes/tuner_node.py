@@ -200,7 +200,8 @@ class TunerNode(FieldnavNode):
             self._stop_episode()
             self.commit(self.session.note("tuner", f"episode {episode.id}: no outcome in time, run again"))
             return
-        self._running = None
+        # requests are latched: who joins now must find a word to stop, not the episode that is over
+        self._stop_episode()
         self._record(episode, report)
 
     def _put(self, set_id: str, parameters: ParameterSet) -> Generator[Wait, Any, bool]:
