@@ -81,11 +81,11 @@ class ParameterSet(Frozen):
         "turn rate per square root of heading error",
     )  # fmt: skip
     arrival_gain: Number = _number(
-        "drive", "K_p", "s^-1", 3.0, 1.0, 40.0, "log",
+        "drive", "K_p", "s^-1", 2.0, 1.0, 40.0, "log",
         "slows down with the distance left",
     )  # fmt: skip
     lateral_accel: Number = _number(
-        "drive", "R_m", "m s^-2", 1.5, 0.3, 12.0, "log",
+        "drive", "R_m", "m s^-2", 1.0, 0.3, 12.0, "log",
         "bounds speed times turn rate",
     )  # fmt: skip
 
