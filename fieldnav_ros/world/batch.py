@@ -8,22 +8,27 @@ from typing import Any
 
 import numpy as np
 
+from fieldnav_ros.drive import limit_wheels
 from fieldnav_ros.errors import InputError
+from fieldnav_ros.field.avoidance import Obstacles
 from fieldnav_ros.guide import DEFAULT_MODEL, Memory, Senses, guide
 from fieldnav_ros.model import KINDS, Layout, Outcome, OutcomeKind
 from fieldnav_ros.parameters import FloatArray, Numbers, ParameterSet, stack
 from fieldnav_ros.pending import slots
 from fieldnav_ros.world import carts as others
-from fieldnav_ros.world.judge import RUNNING, Track, look
+from fieldnav_ros.world.judge import Ended, Lookout, Track
 from fieldnav_ros.world.noise import Tapes, is_quiet, record
-from fieldnav_ros.world.plant import STEP, Delay, Motion, PlantRows, step
+from fieldnav_ros.world.plant import STEP, Delay, Motion, PlantRows, follow
 from fieldnav_ros.yard import Plant, Yard
 
-CHUNK = 2048
-"""Rows that are stepped together: their working set stays in a core's own cache."""
-TAPE_CELLS = 1 << 22
-"""Most rows times steps that are stepped together: bounds the memory that noise tapes take."""
-COMPACT_EVERY = 25
+CHUNK = 4096
+"""Rows that are stepped together: enough that the calls cost little, few enough for a core's cache and memory."""
+TAPE_CELLS = 1 << 21
+"""Most layouts times steps that are stepped together: bounds the memory that noise tapes take."""
+COMPACT_AT = 0.03
+"""Share of finished rows from which on they leave: stepping them on costs more than leaving."""
+REACH = 1.5
+"""How much farther than at its nominal speed anything comes in a step (wheel mismatch, two axes), generously."""
 LONGEST = 600.0
 """Longest time limit in s, as for a grade."""
 
@@ -77,11 +82,13 @@ def simulate(
     column = np.tile(np.arange(count), len(sets))
     code, time, clearance = np.empty(len(column), dtype=int), np.empty(len(column)), np.empty(len(column))
     steps = 0
-    most = max(1, min(CHUNK, TAPE_CELLS // max(1, round(limit / STEP))))
+    on_tape = max(1, TAPE_CELLS // max(1, round(limit / STEP)))  # layouts
+    most = max(1, CHUNK if count <= on_tape else min(CHUNK, on_tape))
     alike = [(plant.pose_rate, bool(layout.obstacles)) for plant, layout in zip(per_layout, layouts)]
     for rows in _chunks(np.array(alike)[column], most):
+        used, place = np.unique(column[rows], return_inverse=True)
         run = _Run(
-            yard, [layouts[i] for i in column[rows]], [per_layout[i] for i in column[rows]],
+            yard, [layouts[i] for i in used], [per_layout[i] for i in used], place,
             Numbers(*(part[rows] for part in numbers)), model, limit, command_delay,
         )  # fmt: skip
         code[rows], time[rows], clearance[rows], taken = run.finish()
@@ -113,31 +120,46 @@ def _chunks(alike: np.ndarray, most: int) -> Iterator[np.ndarray]:
 
 
 class _Run:
-    """One chunk of rows from start to end; finished rows leave it now and then."""
+    """One chunk of rows from start to end; finished rows leave it now and then.
+
+    What belongs to a layout (its carts, its noise) is kept once for all the rows that run on it: ``place`` says
+    which layout a row runs on.
+    """
 
     def __init__(
-        self, yard: Yard, layouts: list[Layout], plants: list[Plant], numbers: Numbers, model: str, limit: float,
-        command_delay: float,
+        self, yard: Yard, layouts: list[Layout], plants: list[Plant], place: np.ndarray, numbers: Numbers, model: str,
+        limit: float, command_delay: float,
     ) -> None:  # fmt: skip
         self.yard, self.model, self.numbers, self.command_delay = yard, model, numbers, command_delay
         self.limit_steps = max(1, round(limit / STEP))
-        rows = len(layouts)
-        self.motion = Motion.at_rest(*_poses([layout.start for layout in layouts]))
-        self.goal = Track(*_poses([layout.goal for layout in layouts]))
+        rows = len(place)
+        self.place = place
+        self.motion = Motion.at_rest(*_poses([layouts[i].start for i in place]))
+        self.goal = Track(*_poses([layouts[i].goal for i in place]))
         self.carts = others.gather(layouts)
-        self.plant = PlantRows.of(plants)
+        self.plant = PlantRows.of([plants[i] for i in place])
         self.delay = Delay(self.plant.delay)
         quiet = all(is_quiet(plant) for plant in plants)
         self.tapes: Tapes | None = None if quiet else record(layouts, plants, self.limit_steps)
         self.poses_per_step = plants[0].pose_rate * STEP
         self.memory = Memory.start(rows, slots(command_delay, STEP * int(1.0 / self.poses_per_step + 1e-9)))
         self.advised = np.full(rows, -1.0 / self.poses_per_step)  # the step of the last pose that came
-        self.v, self.w = np.zeros(rows), np.zeros(rows)
+        self.wheels = np.zeros(rows), np.zeros(rows)  # what they have been told
+        self.near = self.carts.take(place)
+        fastest = float(np.hypot(self.carts.vx, self.carts.vy).max(initial=0.0))
+        self.moving = fastest > 0.0
+        reach = REACH * yard.robot.wheel_speed * STEP
+        self.lookout = Lookout(
+            yard.robot.radius, yard.floor, yard.arrival, reach, 2.0 * reach / yard.robot.track,
+            REACH * fastest * STEP, float(self.carts.radius.max(initial=0.0)),
+        )  # fmt: skip
         self.index = np.arange(rows)
         self.code = np.full(rows, OutcomeKind.TIMEOUT.code)
         self.time = np.full(rows, self.limit_steps * STEP)
         self.clearance = np.full(rows, np.inf)
+        self.least = np.full(rows, np.inf)  # of the rows that are left
         self.done = np.zeros(rows, dtype=bool)
+        self.running = rows
         self.steps = 0
 
     def finish(self) -> tuple[Any, Any, Any, int]:
@@ -148,65 +170,70 @@ class _Run:
                 due += 1
                 self._advise(number)
             self._step(number)
-            if (number + 1) % COMPACT_EVERY == 0:
+            if self.done.size - self.running > COMPACT_AT * self.done.size:
                 self._compact()
-                if self.index.size == 0:
-                    break
+            if not self.running:
+                break
+        self.clearance[self.index] = self.least
         return self.code, self.time, self.clearance, self.steps
 
     def _advise(self, number: int) -> None:
         motion, tapes = self.motion, self.tapes
         x, y, yaw = motion.x, motion.y, motion.yaw
         if tapes is not None:
-            x, y, yaw = x + tapes.x[number], y + tapes.y[number], yaw + tapes.yaw[number]
+            error = tapes.errors(number, self.place)
+            x, y, yaw = x + error[0], y + error[1], yaw + error[2]
         advice = guide(
-            Senses(x, y, yaw, *self.goal, self.carts), self.numbers, self.yard.robot, self.yard.floor,
+            Senses(x, y, yaw, *self.goal, self.near), self.numbers, self.yard.robot, self.yard.floor,
             self.memory, STEP * (number - self.advised), self.model, self.command_delay,
         )  # fmt: skip
-        if tapes is None or not tapes.lost[number].any():
-            self.v, self.w, self.memory = advice.v, advice.w, advice.memory
+        wheels = limit_wheels(advice.v, advice.w, self.yard.robot)
+        lost = None if tapes is None else tapes.lost[number][self.place]
+        if lost is None or not lost.any():
+            self.wheels, self.memory = wheels, advice.memory
             self.advised = np.full(self.advised.shape, float(number))
             return
-        lost = tapes.lost[number]
-        self.v, self.w = np.where(lost, self.v, advice.v), np.where(lost, self.w, advice.w)
+        self.wheels = np.where(lost, self.wheels[0], wheels[0]), np.where(lost, self.wheels[1], wheels[1])
         self.advised = np.where(lost, self.advised, number)
         self.memory = Memory(*(np.where(lost, old, new) for old, new in zip(self.memory, advice.memory)))
 
     def _step(self, number: int) -> None:
-        before, carts_before = self.motion, self.carts
-        v, w = self.delay.pass_through(self.v, self.w)
-        grip = 1.0 if self.tapes is None else self.tapes.grip[number]
-        self.motion = step(before, v, w, self.yard.robot, self.plant, grip)
-        self.carts = others.move(carts_before, self.yard.floor, STEP)
-        found = look(
-            Track(*before[:3]), Track(*self.motion[:3]), carts_before, self.carts, self.goal,
-            self.yard.robot.radius, self.yard.floor, self.yard.arrival,
-        )  # fmt: skip
-        running = ~self.done
-        self.steps += int(np.count_nonzero(running))
-        here = self.index
-        self.clearance[here] = np.where(
-            running, np.minimum(self.clearance[here], found.clearance), self.clearance[here]
+        yard, before, near_before = self.yard, self.motion, self.near
+        left, right = self.delay.pass_through(*self.wheels)
+        grip = 1.0 if self.tapes is None else self.tapes.grip[number][self.place]
+        self.motion = follow(before, left, right, yard.robot, self.plant, grip)
+        if self.moving:
+            self.carts = others.move(self.carts, yard.floor, STEP)
+            x, y, vx, vy = (np.take(part, self.place, axis=1) for part in self.carts[:4])
+            self.near = Obstacles(x, y, vx, vy, near_before.radius)
+        ended = self.lookout.look(
+            Track(*before[:3]), Track(*self.motion[:3]), near_before, self.near, self.goal, self.least
         )
-        ended = running & (found.code != RUNNING)
-        if ended.any():
-            self.code[here[ended]] = found.code[ended]
-            self.time[here[ended]] = (number + 1) * STEP
-            self.done |= ended
+        self.steps += self.running
+        if ended.rows.size:
+            self._end(ended, number)
+
+    def _end(self, ended: Ended, number: int) -> None:
+        new = ~self.done[ended.rows]
+        rows = ended.rows[new]
+        here = self.index[rows]
+        self.code[here] = ended.code[new]
+        self.time[here] = (number + 1) * STEP
+        self.clearance[here] = self.least[rows]
+        self.done[rows] = True
+        self.running -= rows.size
 
     def _compact(self) -> None:
-        if np.count_nonzero(self.done) * 8 < self.done.size:
-            return
-        keep = ~self.done
+        keep = np.flatnonzero(~self.done)
         self.motion = Motion(*(part[keep] for part in self.motion))
-        self.goal = Track(*(part[keep] for part in self.goal))
-        self.carts = self.carts.take(keep)
+        self.goal = self.goal.take(keep)
+        self.near = self.near.take(keep)
         self.plant = PlantRows(*(part[keep] for part in self.plant))
         self.delay.keep(keep)
         self.numbers = Numbers(*(part[keep] for part in self.numbers))
         self.memory = self.memory.take(keep)
-        self.v, self.w, self.advised = self.v[keep], self.w[keep], self.advised[keep]
-        self.tapes = None if self.tapes is None else self.tapes.keep(keep)
+        self.wheels = self.wheels[0][keep], self.wheels[1][keep]
+        self.advised, self.least, self.place = self.advised[keep], self.least[keep], self.place[keep]
         self.index, self.done = self.index[keep], self.done[keep]
 
 

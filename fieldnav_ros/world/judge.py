@@ -17,6 +17,10 @@ from fieldnav_ros.parameters import FloatArray
 from fieldnav_ros.yard import Arrival, Floor
 
 RUNNING = -1
+TINY = 1e-300
+"""Below the square of any way that is driven: a segment without length is divided by it."""
+FEW = 256
+"""Fewer rows are looked at faster all together than after picking some out."""
 
 
 class Track(NamedTuple):
@@ -25,6 +29,10 @@ class Track(NamedTuple):
     x: FloatArray
     y: FloatArray
     yaw: FloatArray
+
+    def take(self, rows: Any) -> Track:
+        """Return the poses of the rows that an index or mask picks."""
+        return Track(self.x[rows], self.y[rows], self.yaw[rows])
 
 
 class Finding(NamedTuple):
@@ -61,6 +69,95 @@ def look(
     return Finding(code, clearance)
 
 
+class Ended(NamedTuple):
+    """Rows that a look has ended, as indices, and the codes of their outcomes."""
+
+    rows: Any
+    code: Any
+
+
+NOBODY = Ended(np.empty(0, dtype=int), np.empty(0, dtype=int))
+
+
+class Lookout:
+    """Judges as ``look`` does, one short segment after the other, for thousands of rows.
+
+    What is farther away than anything comes in a segment neither ends a row nor lessens its gap, and is not looked
+    at closely; the findings are the same, bit for bit.
+    """
+
+    def __init__(
+        self, radius: float, floor: Floor, arrival: Arrival, reach: float, turn: float, carts_reach: float, cart: float
+    ) -> None:
+        """Say what holds for every segment.
+
+        ``reach`` (m) and ``turn`` (rad) bound how far a robot comes and turns in one, ``carts_reach`` how far a cart
+        comes; ``radius`` is the robot's, ``cart`` the largest of the carts'. Lengths in m.
+        """
+        self._radius, self._floor, self._arrival = radius, floor, arrival
+        self._margin = radius + cart + reach + carts_reach
+        self._near_goal = (arrival.position + reach) ** 2
+        self._near_heading = arrival.heading + turn
+
+    def look(
+        self, before: Track, now: Track, carts_before: Obstacles, carts: Obstacles, goal: Track, least: FloatArray
+    ) -> Ended:
+        """Return the rows that the segment ends; bring ``least`` (m), (N,), up to the least gap so far, in place."""
+        floor = self._floor
+        to_edge = np.minimum(
+            np.minimum(now.x - floor.x[0], floor.x[1] - now.x), np.minimum(now.y - floor.y[0], floor.y[1] - now.y)
+        )
+        if floor.walled:
+            np.minimum(least, to_edge - self._radius, out=least)
+        if len(carts.x):
+            self._look_at_carts(before, now, carts_before, carts, least)
+        there = self._arrived(before, now, goal)
+        if not there.size and least.min(initial=0.0) >= 0.0 and to_edge.min(initial=0.0) >= 0.0:
+            return NOBODY
+        code = np.full(least.shape, RUNNING)
+        code[there] = OutcomeKind.ARRIVED.code
+        code[least < 0.0] = OutcomeKind.CONTACT.code
+        code[to_edge < 0.0] = OutcomeKind.OFF_FLOOR.code
+        rows = np.flatnonzero(code != RUNNING)
+        return Ended(rows, code[rows])
+
+    def _look_at_carts(
+        self, before: Track, now: Track, carts_before: Obstacles, carts: Obstacles, least: FloatArray
+    ) -> None:
+        within = least + self._margin
+        within *= within
+        (close,) = (_nearest_square(now, carts) < within).nonzero()
+        if not close.size:
+            return
+        if least.size < FEW or 2 * close.size > least.size:
+            gap = _gap_to_carts(before, now, carts_before, carts)
+            np.minimum(least, gap - self._radius, out=least)
+            return
+        gap = _gap_to_carts(before.take(close), now.take(close), carts_before.take(close), carts.take(close))
+        least[close] = np.minimum(least[close], gap - self._radius)
+
+    def _arrived(self, before: Track, now: Track, goal: Track) -> Any:
+        off_x, off_y = now.x - goal.x, now.y - goal.y
+        off_x *= off_x
+        off_y *= off_y
+        off_x += off_y
+        (rows,) = (off_x <= self._near_goal).nonzero()
+        if rows.size:
+            rows = rows[np.abs(wrap(now.yaw[rows] - goal.yaw[rows])) <= self._near_heading]
+        if rows.size:
+            rows = rows[arrived(before.take(rows), now.take(rows), goal.take(rows), self._arrival)]
+        return rows
+
+
+def _nearest_square(now: Track, carts: Obstacles) -> Any:
+    """Return the squared distance (m^2) from the robot's centre to the nearest cart's centre, (N,)."""
+    dx, dy = now.x - carts.x, now.y - carts.y
+    dx *= dx
+    dy *= dy
+    dx += dy
+    return dx.min(axis=0)
+
+
 def arrived(before: Track, now: Track, goal: Track, arrival: Arrival) -> Any:
     """Tell where the segment is within both tolerances at its point nearest to the goal or at its end. Shape (N,)."""
     dx, dy = now.x - before.x, now.y - before.y
@@ -87,11 +184,11 @@ def _gap_to_carts(before: Track, now: Track, carts_before: Obstacles, carts: Obs
     share = _nearest_share(from_x, from_y, dx, dy)
     off_x, off_y = from_x + share * dx, from_y + share * dy
     gap = np.sqrt(off_x * off_x + off_y * off_y) - carts.radius
-    return np.min(np.where(carts.radius > 0.0, gap, np.inf), axis=0)
+    return np.where(carts.radius > 0.0, gap, np.inf).min(axis=0)
 
 
 def _nearest_share(from_x: Any, from_y: Any, dx: Any, dy: Any) -> Any:
     """Return where on the segment from (from_x, from_y) by (dx, dy) the origin is nearest, in 0..1."""
-    length = dx * dx + dy * dy
-    share = -(from_x * dx + from_y * dy) / np.where(length > 0.0, length, 1.0)
-    return np.clip(share, 0.0, 1.0)
+    length = np.maximum(dx * dx + dy * dy, TINY)
+    share = -(from_x * dx + from_y * dy) / length
+    return np.minimum(np.maximum(share, 0.0), 1.0)

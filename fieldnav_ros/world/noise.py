@@ -25,9 +25,9 @@ class Tapes(NamedTuple):
     grip: FloatArray
     lost: np.ndarray
 
-    def keep(self, rows: np.ndarray) -> Tapes:
-        """Return the tapes of the rows that an index or mask picks."""
-        return Tapes(*(part[:, rows] for part in self))
+    def errors(self, step: int, rows: np.ndarray) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Return the pose errors (m, m, rad) of a step for the rows that an index picks."""
+        return self.x[step][rows], self.y[step][rows], self.yaw[step][rows]
 
 
 def is_quiet(plant: Plant) -> bool:

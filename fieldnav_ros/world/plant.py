@@ -62,13 +62,17 @@ def arc(x: Any, y: Any, yaw: Any, travel: Any, turned: Any) -> tuple[Any, Any, A
 
 
 def step(motion: Motion, v: Any, w: Any, robot: Robot, rows: PlantRows, grip: Any = 1.0) -> Motion:
-    """Return the motion one STEP later under speed ``v`` (m/s) and turn rate ``w`` (rad/s).
+    """Return the motion one STEP later under speed ``v`` (m/s) and turn rate ``w`` (rad/s); see ``follow``."""
+    return follow(motion, *limit_wheels(v, w, robot), robot, rows, grip)
 
-    The wheels follow within their acceleration, evenly over the step, so that the mean of their speeds before
+
+def follow(motion: Motion, left: Any, right: Any, robot: Robot, rows: PlantRows, grip: Any = 1.0) -> Motion:
+    """Return the motion one STEP later while the wheels are to take the speeds ``left`` and ``right`` (m/s).
+
+    They follow within their acceleration, evenly over the step, so that the mean of their speeds before
     and after gives the way travelled; the mismatch makes one wheel travel further than the other; ``grip`` is
     the share of the wheels' travel that reaches the floor. Yaw is not wrapped.
     """
-    left, right = limit_wheels(v, w, robot)
     most = robot.wheel_accel * rows.accel_scale * STEP
     left, right = limit_change(left, motion.left, most), limit_change(right, motion.right, most)
     # right/left = 1 + mismatch with a mean of 1
@@ -79,7 +83,7 @@ def step(motion: Motion, v: Any, w: Any, robot: Robot, rows: PlantRows, grip: An
 
 
 class Delay:
-    """Commands on their way to the wheels: a ring of as many steps as the longest delay, (steps, N)."""
+    """Commands, two numbers each, on their way to the wheels: a ring as long as the longest delay, (steps, N)."""
 
     def __init__(self, delay: Any) -> None:
         self._delay = np.asarray(delay)

@@ -71,7 +71,7 @@ def test_a_result_does_not_depend_on_the_rows_beside_it(
 
 @pytest.mark.parametrize(
     ("name", "value"),
-    [("CHUNK", 1), ("CHUNK", 3), ("COMPACT_EVERY", 1), ("COMPACT_EVERY", 10**9), ("TAPE_CELLS", 1000)],
+    [("CHUNK", 1), ("CHUNK", 3), ("COMPACT_AT", 0.0), ("COMPACT_AT", 2.0), ("TAPE_CELLS", 1000)],
 )
 def test_a_result_does_not_depend_on_chunks_and_compaction(
     monkeypatch: pytest.MonkeyPatch, name: str, value: int

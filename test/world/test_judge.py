@@ -13,7 +13,8 @@ from scipy.optimize import minimize_scalar
 
 from fieldnav_ros.field.avoidance import Obstacles
 from fieldnav_ros.model import OutcomeKind
-from fieldnav_ros.world.judge import RUNNING, Finding, Track, arrived, look
+from fieldnav_ros.world.carts import FAR
+from fieldnav_ros.world.judge import RUNNING, Finding, Lookout, Track, arrived, look
 from fieldnav_ros.yard import Arrival, Floor
 
 OPEN = Floor(x=(-50.0, 50.0), y=(-50.0, 50.0), walled=False)
@@ -159,3 +160,36 @@ def test_rows_are_judged_each_for_itself() -> None:
     empty = Obstacles.none(4)
     found = look(at, at, empty, empty, goal, RADIUS, UNWALLED, TIGHT)
     assert found.code.tolist() == [RUNNING, OutcomeKind.ARRIVED.code, RUNNING, OutcomeKind.OFF_FLOOR.code]
+
+
+# many looks, thousands of rows
+
+
+@settings(deadline=None, max_examples=60)
+@given(seed=st.integers(0, 10**6), rows=st.integers(1, 400), carts=st.integers(0, 4), walled=st.booleans())
+def test_a_lookout_finds_what_looks_find(seed: int, rows: int, carts: int, walled: bool) -> None:
+    """Bit for bit, over a walk of robots and carts that ends some rows: near the goal, near carts, over the edge."""
+    rng = np.random.default_rng(seed)
+    floor = Floor(x=(0.0, 2.4), y=(0.0, 1.6), walled=walled)
+    goal = Track(rng.uniform(0.3, 2.1, rows), rng.uniform(0.3, 1.3, rows), rng.uniform(-3.2, 3.2, rows))
+    now = Track(goal.x + rng.normal(0, 0.1, rows), goal.y + rng.normal(0, 0.1, rows), goal.yaw + rng.normal(0, 1, rows))
+    speed = rng.uniform(-0.5, 0.5, (2, carts, rows))
+    radius = np.where(rng.random((carts, rows)) < 0.2, 0.0, 0.06)  # discs of radius 0 are no carts
+    places = rng.uniform(0.0, 1.6, (2, carts, rows))
+    far = np.where(radius > 0.0, places, FAR)
+    crowd = Obstacles(far[0], far[1], speed[0], speed[1], radius)
+    lookout = Lookout(0.06, floor, Arrival(), 0.018, 0.36, 0.01, 0.06)
+    least, expected = np.full(rows, np.inf), np.full(rows, np.inf)
+    for _ in range(12):
+        before, crowd_before = now, crowd
+        way, turned = rng.uniform(0, 0.018, rows), rng.uniform(-0.36, 0.36, rows)
+        now = Track(now.x + way * np.cos(now.yaw), now.y + way * np.sin(now.yaw), now.yaw + turned)
+        crowd = crowd._replace(x=crowd.x + 0.01 * crowd.vx, y=crowd.y + 0.01 * crowd.vy)
+        found = look(before, now, crowd_before, crowd, goal, 0.06, floor, Arrival())
+        running = expected >= 0.0
+        expected = np.minimum(expected, found.clearance)
+        ended = lookout.look(before, now, crowd_before, crowd, goal, least)
+        assert np.array_equal(least, expected)
+        codes = np.full(rows, RUNNING)
+        codes[ended.rows] = ended.code
+        assert np.array_equal(codes[running], found.code[running])
