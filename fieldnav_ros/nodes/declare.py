@@ -52,8 +52,10 @@ class Setting:
             description=self.meaning,
             additional_constraints=extra,
             read_only=not self.live,
-            floating_point_range=[FloatingPointRange(from_value=self.low, to_value=self.high)] * (kind is float),
-            integer_range=[IntegerRange(from_value=int(self.low), to_value=int(self.high))] * (kind is int),
+            floating_point_range=(
+                [FloatingPointRange(from_value=float(self.low), to_value=float(self.high))] if kind is float else []
+            ),
+            integer_range=[IntegerRange(from_value=int(self.low), to_value=int(self.high))] if kind is int else [],
         )
 
 

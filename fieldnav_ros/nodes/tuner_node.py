@@ -65,6 +65,7 @@ SETTINGS = (
     Setting("floor_clock", "wall", "wall: floor time as the clock runs; episode: the outcomes' own times and the "
             "yard's reset time, for simulators that are not paced", choices=("wall", "episode")),
     Setting("rounds", 1, "most verdicts in the session; more share the 5 % error among them", 1, 16),
+    Setting("verdict_share", 0.35, "share of the floor time kept for the verdict", 0.05, 0.95),
     Setting("place", "", "where the session is held, for the record"),
     Setting("begin", False, "begin at once, without waiting for the service ~/begin"),
     Setting("outcome_deadline", 10.0, "s of waiting beyond the time limit, before an episode is run again", 0.5, 600.0),
@@ -125,6 +126,7 @@ class TunerNode(FieldnavNode):
             grade=self.settings["grade"],
             time_limit=self.time_limit,
             rounds=self.settings["rounds"],
+            verdict_share=self.settings["verdict_share"],
             reset_guess_s=self.yard.reset_time,
         )
         self.session.apply(*self.ledger.events())
