@@ -46,7 +46,8 @@ def trails(
         if rows:
             chosen = stack([sets[index] for index in rows])
             plants = [yard.plant] * len(rows)
-            run = _Walk(yard, [layouts[index] for index in rows], plants, chosen, model, time_limit, command_delay)
+            here = [layouts[index] for index in rows]
+            run = _Walk(yard, here, plants, np.arange(len(rows)), chosen, model, time_limit, command_delay)
             result.update(zip(rows, run.trails()))
     return [result[index] for index in range(len(layouts))]
 
@@ -64,8 +65,7 @@ class _Walk(_Run):
         self._y.append(self.motion.y)
 
     def _compact(self) -> None:
-        if self.done.all():
-            self.index = self.index[:0]  # ends the run
+        """Let every row stay: what is kept of each step must have the same rows."""
 
     def trails(self) -> list[Trail]:
         code, time, _, _ = self.finish()
