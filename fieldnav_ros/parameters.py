@@ -197,7 +197,8 @@ def markdown_table() -> str:
         "| --- | --- | --- | --- | --- | --- |",
     ]
     rows += [
-        f"| `{row.ros_name}` | {row.symbol} | {row.unit} | {row.default:g} | {row.low:g} to {row.high:g} | {row.meaning} |"
+        f"| `{row.ros_name}` | {row.symbol} | {row.unit} | {row.default:g} | {row.low:g} to {row.high:g} "
+        f"| {row.meaning} |"
         for row in TABLE
     ]
     return "\n".join(rows) + "\n"

@@ -33,7 +33,7 @@ def row(*values: float) -> list[np.ndarray]:
 
 def crowd(states: list[tuple[float, float, float, float]]) -> Obstacles:
     table = np.array(states, dtype=float).reshape(-1, 4).T[:, :, None]
-    return Obstacles(*table, np.full(table.shape[1:], 0.06))
+    return Obstacles._make([*table, np.full(table.shape[1:], 0.06)])
 
 
 @pytest.mark.parametrize("model", MODELS)
@@ -58,7 +58,7 @@ def test_any_finite_input_gives_a_finite_command_within_wheel_speed_and_accelera
 def test_rows_have_nothing_to_do_with_each_other(model: str) -> None:
     rng = np.random.default_rng(3)
     poses = [rng.uniform(0.2, 1.4, 20) for _ in range(6)]
-    carts = Obstacles(*rng.uniform(-0.4, 1.4, (4, 3, 20)), np.full((3, 20), 0.06))
+    carts = Obstacles._make([*rng.uniform(-0.4, 1.4, (4, 3, 20)), np.full((3, 20), 0.06)])
     together = guide(Senses._make([*poses, carts]), DEFAULTS.numbers(), ROBOT, FLOOR, Memory.start(20), 0.02, model)
     for index in range(20):
         one = slice(index, index + 1)

@@ -116,7 +116,7 @@ class Zones(NamedTuple):
 
     def take(self, rows: Any) -> Zones:
         """Return the zones of the rows that an index or mask picks."""
-        return Zones(*(part[..., rows] for part in self[:-1]), self.wall_contact)
+        return Zones._make([*(part[..., rows] for part in self[:-1]), self.wall_contact])
 
     def at(self, look: int, x: Any, y: Any) -> tuple[Any, Any]:
         """Return how deep in a zone (0 to 1 and beyond) and whether touching, at a look, at x, y (m; (C, N))."""

@@ -24,14 +24,15 @@ from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
+from unittest import mock
 
 import cma
 import numpy as np
 
 HERE = Path(__file__).resolve()
 sys.path[:0] = [str(HERE.parent), str(HERE.parents[2])]
-from escapes import contacts  # noqa: E402  # beside this file
-from peers import PEERS, Peer  # noqa: E402  # beside this file
+from escapes import contacts  # beside this file
+from peers import PEERS, Peer  # beside this file
 
 from fieldnav_ros.model import Layout, OutcomeKind
 from fieldnav_ros.parameters import DEFAULTS, TABLE, ParameterSet
@@ -85,18 +86,16 @@ class Way:
 @contextmanager
 def instead_of_guide(peer: Peer | None) -> Iterator[None]:
     """Let the simulator ask the peer for commands."""
-    kept = batch.guide
-    if peer is not None:
-        many = len(peer.ranges)
-
-        def ask(senses: Any, numbers: Any, *rest: Any) -> Any:
-            return peer.guide(senses, numbers[:many], *rest)
-
-        batch.guide = ask  # type: ignore[assignment]  # same call, other rule
-    try:
+    if peer is None:
         yield
-    finally:
-        batch.guide = kept
+        return
+    many = len(peer.ranges)
+
+    def ask(senses: Any, numbers: Any, *rest: Any) -> Any:
+        return peer.guide(senses, numbers[:many], *rest)
+
+    with mock.patch.object(batch, "guide", ask):
+        yield
 
 
 def own(model: str) -> Way:
@@ -118,7 +117,8 @@ def foreign(peer: Peer) -> Way:
 
 
 WAYS: dict[str, Way] = {
-    "foresight": own("foresight"), "published": own("published"), **{name: foreign(peer) for name, peer in PEERS.items()},
+    "foresight": own("foresight"), "published": own("published"),
+    **{name: foreign(peer) for name, peer in PEERS.items()},
 }  # fmt: skip
 
 

@@ -41,7 +41,7 @@ def contacts(
     """Return how many of these episodes' contacts no escape avoids, and how many met a standing robot."""
     unavoidable = standing = 0
     for layout in layouts:
-        run = _Recorder(yard, [layout], [plant], stack([made]), model, limit, plant.command_delay)
+        run = _Recorder(yard, [layout], [plant], np.arange(1), stack([made]), model, limit, plant.command_delay)
         run.start_record()
         run.finish()
         last = round(float(run.time[0]) / STEP)

@@ -21,7 +21,7 @@ places = st.floats(-3.0, 3.0)
 def discs(*states: tuple[float, float, float, float]) -> Obstacles:
     """Return obstacles (x, y, vx, vy) for one row."""
     table = np.array(states, dtype=float).reshape(-1, 4).T[:, :, None]
-    return Obstacles(*table, np.full(table.shape[1:], 0.06))
+    return Obstacles._make([*table, np.full(table.shape[1:], 0.06)])
 
 
 def repulsion(x: float, y: float, obstacles: Obstacles, lead: float = 0.0) -> tuple[float, float, float]:
