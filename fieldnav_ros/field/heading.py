@@ -54,7 +54,7 @@ class Goal(NamedTuple):
 
 
 class Habit(NamedTuple):
-    """What keeps the robot from dithering, each (N,): side of the circle, last way driven (unit vector), wait so far (s).
+    """What keeps it from dithering, each (N,): side of the circle, last way driven (unit vector), time waited (s).
 
     ``side`` is +1, -1, or 0 where none has been taken yet; the course is (0, 0) before the first.
     """
