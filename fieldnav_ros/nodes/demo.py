@@ -87,17 +87,22 @@ def _make(folder: Path) -> None:
         raise InputError(f"{folder}: cannot be written to")
 
 
-@contextmanager
-def _graph(files: Files, floor_time_min: float, seed: int) -> Iterator[tuple[Processes, Watch]]:
-    domain = Domain()
-    environment = domain.environment()
-    os.environ.update(environment)
-    tuner = {
+def tuner_parameters(files: Files, floor_time_min: float, seed: int) -> dict[str, object]:
+    """Return the parameters of the demo's tuner; ``floor_time_min`` in simulated minutes."""
+    return {
         "ledger": files.ledger, "champion_file": files.champion, "floor_time": floor_time_min,
         "seed": seed, "grade": GRADE, "floor_clock": "episode",
         # the carts' contacts make costs noisy: enough pairs for a proof matter more here than a longer search
         "verdict_share": 0.5, "place": "simulation, the demo's parcel yard",
     }  # fmt: skip
+
+
+@contextmanager
+def _graph(files: Files, floor_time_min: float, seed: int) -> Iterator[tuple[Processes, Watch]]:
+    domain = Domain()
+    environment = domain.environment()
+    os.environ.update(environment)
+    tuner = tuner_parameters(files, floor_time_min, seed)
     context = Context()
     with Processes(environment) as processes:
         for node in ("simulator_node", "judge_node", "guidance_node", "tuner_node"):

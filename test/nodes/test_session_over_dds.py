@@ -19,8 +19,12 @@ import pytest
 
 pytest.importorskip("rclpy", reason="starts real nodes")
 
+import rclpy
 from rclpy.context import Context
+from rclpy.executors import SingleThreadedExecutor
+from rclpy.parameter_client import AsyncParameterClient
 
+from fieldnav_ros.nodes.demo import Files, tuner_parameters
 from fieldnav_ros.nodes.processes import Processes
 from fieldnav_ros.nodes.watch import Watch
 from fieldnav_ros.params_file import read_parameters
@@ -30,7 +34,7 @@ from fieldnav_ros.tuning.ledger import Ledger
 from fieldnav_ros.tuning.session import Session
 
 pytestmark = pytest.mark.ros
-FLOOR_TIME = 5.0
+FLOOR_TIME, SEED = 5.0, 5
 DEADLINE = 120.0
 WORLD = ("simulator_node", "judge_node", "guidance_node")
 
@@ -48,14 +52,9 @@ def scored(events: list[Event]) -> list[tuple[int, str, float, float]]:
     ]
 
 
-def start(processes: Processes, node: str, folder: Path, **more: object) -> None:
+def start(processes: Processes, node: str, folder: Path) -> None:
     """Start a node as the demo does; the tuner on the folder's ledger."""
-    own: dict[str, object] = {}
-    if node == "tuner_node":
-        own = {
-            "ledger": folder / "session.ledger", "champion_file": folder / "champion.yaml",
-            "floor_time": FLOOR_TIME, "seed": 5, **more,
-        }  # fmt: skip
+    own = tuner_parameters(Files(folder), FLOOR_TIME, SEED) if node == "tuner_node" else {}
     files = [config_path(f"{node.removesuffix('_node')}.yaml"), config_path("lockstep.yaml")]
     processes.start(node, own, files)
 
@@ -93,7 +92,7 @@ def undisturbed(tmp_path_factory: pytest.TempPathFactory) -> tuple[dict[str, Any
     folder = tmp_path_factory.mktemp("undisturbed")
     words = [sys.executable, "-m", "fieldnav_ros.cli", "demo", "--out", str(folder), "--floor-time", str(FLOOR_TIME)]
     done = subprocess.run(
-        [*words, "--seed", "5", "--json"], capture_output=True, text=True, timeout=2 * DEADLINE, check=False
+        [*words, "--seed", str(SEED), "--json"], capture_output=True, text=True, timeout=2 * DEADLINE, check=False
     )
     assert done.returncode == 0, done.stderr
     return json.loads(done.stdout.splitlines()[-1]), folder, done.stdout
@@ -114,6 +113,30 @@ def test_champion_file_holds_the_ledgers_champion(undisturbed: tuple[dict[str, A
     session.apply(*events_of(undisturbed[1] / "session.ledger"))
     assert session.ended
     assert read_parameters(undisturbed[1] / "champion.yaml") == session.champion.parameters
+
+
+def test_champion_file_puts_its_numbers_in_service_by_params_file(
+    undisturbed: tuple[dict[str, Any], Path, str],
+) -> None:
+    """What ``--params-file`` is for; the numbers are read back over DDS."""
+    champion = undisturbed[1] / "champion.yaml"
+    context = Context()
+    rclpy.init(args=[], context=context)
+    node = rclpy.create_node("reader", context=context)
+    executor = SingleThreadedExecutor(context=context)
+    executor.add_node(node)
+    client = AsyncParameterClient(node, "guidance_node")
+    with Processes({}) as processes:
+        processes.start("guidance_node", {}, [champion])
+        assert client.wait_for_services(DEADLINE)
+        wanted = read_parameters(champion).to_ros()
+        future = client.get_parameters(list(wanted))
+        executor.spin_until_future_complete(future, timeout_sec=DEADLINE)
+        assert [value.double_value for value in future.result().values] == list(wanted.values())
+        processes.check()
+    executor.shutdown()
+    node.destroy_node()
+    context.try_shutdown()
 
 
 def test_tuner_killed_twice_goes_on_to_the_very_same_episodes(
