@@ -15,6 +15,7 @@ import sys
 import sysconfig
 import time
 import venv
+from contextlib import ExitStack
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -211,29 +212,42 @@ def test_the_command_line_starts(layout: Layout) -> None:
 @in_a_prefix
 def test_the_nodes_start_appear_in_the_graph_and_stop_when_asked(layout: Layout, tmp_path: Path) -> None:
     """Each executable as launch starts it; SIGINT ends it with exit code 0."""
-    processes = [
-        subprocess.Popen(
-            [layout.prefix / "lib" / "fieldnav_ros" / node],
-            cwd=tmp_path,
-            env=layout.environment,
-            stdout=subprocess.DEVNULL,
-            stderr=subprocess.PIPE,
-        )
-        for node in NODES
-    ]
-    try:
-        wait_for_nodes(set(NODES), processes)
-        for process in processes:
-            process.send_signal(signal.SIGINT)
-        ends = [(process.communicate(timeout=STOP_TIME)[1].decode(), process.returncode) for process in processes]
-        assert [code for _, code in ends] == [0] * len(NODES), ends
-    finally:
-        for process in processes:
-            process.kill()
-            process.communicate()
+    with ExitStack() as stack:
+        running = [stack.enter_context(Running(layout, node, tmp_path)) for node in NODES]
+        wait_for_nodes(set(NODES), running)
+        for node in running:
+            node.process.send_signal(signal.SIGINT)
+        ends = [(node.process.wait(STOP_TIME), node.said()) for node in running]
+        assert [code for code, _ in ends] == [0] * len(NODES), ends
 
 
-def wait_for_nodes(wanted: set[str], processes: list[subprocess.Popen[bytes]]) -> None:
+class Running:
+    """A node in a process of its own, which is gone when the block ends, however it ends."""
+
+    def __init__(self, layout: Layout, node: str, folder: Path) -> None:
+        self.name = node
+        self._log = folder / f"{node}.log"
+        with self._log.open("wb") as log:
+            self.process = subprocess.Popen(
+                [layout.prefix / "lib" / "fieldnav_ros" / node],
+                cwd=folder,
+                env=layout.environment,
+                stdout=log,
+                stderr=subprocess.STDOUT,
+            )
+
+    def __enter__(self) -> Running:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self.process.kill()
+        self.process.wait()
+
+    def said(self) -> str:
+        return self._log.read_text("utf-8", errors="replace")
+
+
+def wait_for_nodes(wanted: set[str], running: list[Running]) -> None:
     """Wait until all nodes are in the graph; fail at once where one has ended, or at the deadline."""
     import rclpy  # here, so that the other tests run without it
     from rclpy.context import Context
@@ -244,8 +258,8 @@ def wait_for_nodes(wanted: set[str], processes: list[subprocess.Popen[bytes]]) -
     try:
         deadline = time.monotonic() + START_TIME
         while not wanted <= set(watcher.get_node_names()):
-            for process in processes:
-                assert process.poll() is None, f"{process.args!r} ended: {process.communicate()[1].decode()}"
+            for node in running:
+                assert node.process.poll() is None, f"{node.name} ended: {node.said()}"
             assert time.monotonic() < deadline, f"in the graph: {watcher.get_node_names()}"
             time.sleep(0.05)
     finally:
