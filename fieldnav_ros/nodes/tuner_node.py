@@ -88,6 +88,8 @@ class TunerNode(FieldnavNode):
         settings = self.settings
         self.yard = yard_of(settings["yard"])
         self.time_limit = self.yard.grade(settings["grade"]).time_limit
+        # before the ledger, so that bad input leaves no empty one behind
+        self._initial = read_parameters(settings["initial"]) if settings["initial"] else DEFAULTS
         self.ledger = Ledger.open(settings["ledger"])
         self.session = Session(self._draw)
         self.link = ServiceLink(self, settings["guidance"], PATIENCE)
@@ -131,12 +133,11 @@ class TunerNode(FieldnavNode):
         )
         self.session.apply(*self.ledger.events())
         if not self.session.begun:
-            initial = read_parameters(self.settings["initial"]) if self.settings["initial"] else DEFAULTS
             about = About(
                 software=f"fieldnav_ros {__version__}", model=DEFAULT_MODEL, yard=self.yard,
                 place=self.settings["place"],
             )  # fmt: skip
-            self.commit(self.session.begin(config, initial, about=about))
+            self.commit(self.session.begin(config, self._initial, about=about))
             return
         if self.session.config != config:
             name = next(key for key, value in config if value != getattr(self.session.config, key))
