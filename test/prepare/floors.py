@@ -51,7 +51,8 @@ def yard_file(folder: Path, **changes: Any) -> Path:
 def work(layouts: int = 9, sets: int = 3) -> Work:
     """Return a work whose sets and outcomes differ."""
     drawn = draw_many(yard(), "moving", layouts, 1)
-    chosen = [DEFAULTS.model_copy(update={"steer_gain": 3.0 + 4.0 * number, "arrival_gain": 6.0}) for number in range(sets)]
+    quick = DEFAULTS.model_copy(update={"arrival_gain": 6.0})
+    chosen = [quick.model_copy(update={"steer_gain": 3.0 + 4.0 * number}) for number in range(sets)]
     return Work(yard(), "moving", 3.0, tuple(drawn), tuple(chosen), MODEL)
 
 
