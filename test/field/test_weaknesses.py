@@ -87,7 +87,7 @@ def test_cancelling_point_ahead_of_the_goal(radius: float, softness: float) -> N
     ids=["wide gate", "narrow gate", "row of three"],
 )
 def test_dithering(carts: list[tuple[float, ...]]) -> None:
-    """Published: the heading flips over from pose to pose, again and again. Default: it makes up its mind, and arrives."""
+    """Published: the heading flips over from pose to pose, again and again. Default: it decides, and arrives."""
     where = layout((0.4, 0.8, 0.0), (2.0, 0.8, 0.0), *carts)
     assert ride(where, WIDE, "published").flips() >= 9
     own = ride(where, same(WIDE), "foresight")
