@@ -134,6 +134,11 @@ make_environment() {
     pip=("$venv/bin/python" -m pip --disable-pip-version-check install --quiet --no-input --retries 2 --prefer-binary
         --no-compile "${pip[@]}" --editable "${sources}[$extras]")
     show_progress "$log" "${pip[@]}" || fail "$(explain "$log")"
+    # pip compiles nothing here, since most of what it installs is never imported. What we import is compiled now, once,
+    # and not by several nodes that start at the same moment. What cannot be imported says so when it is needed.
+    "$venv/bin/python" -c 'import importlib, pkgutil, fieldnav_ros
+for module in pkgutil.walk_packages(fieldnav_ros.__path__, "fieldnav_ros."):
+    importlib.import_module(module.name)' >>"$log" 2>&1 || true
 }
 
 # show_progress LOG COMMAND...: runs the command with its output in LOG and, at a terminal, the seconds it has taken.
