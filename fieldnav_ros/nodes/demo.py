@@ -29,7 +29,7 @@ from fieldnav_ros.yard import load_yard
 
 GRADE = "moving"
 UNSEEN_LAYOUTS = 200
-START_LIMIT = 30.0
+START_LIMIT = 120.0
 SILENCE_LIMIT = 60.0
 
 
