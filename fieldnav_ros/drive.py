@@ -21,15 +21,21 @@ def wrap(angle: Any) -> Any:
     return angle - 2.0 * np.pi * np.floor(angle / (2.0 * np.pi) + 0.5)
 
 
-def drive(error: Any, bend: Any, distance: Any, numbers: Numbers, robot: Robot) -> tuple[Any, Any]:
+def drive(
+    error: Any, bend: Any, distance: Any, numbers: Numbers, robot: Robot, ease: float = 0.0
+) -> tuple[Any, Any]:
     """Return speed (m/s) and turn rate (rad/s) for a heading error.
 
     error: field heading less yaw, rad, in [-pi, pi); bend: change of the field's heading per metre driven,
     rad/m; distance: to the goal, m. Each (N,). The wheels stay within ``robot.wheel_speed`` by construction:
     with v the speed and w = bend v + s the turn rate, |v| + |w| L/2 <= v_max bounds v by
     (2 v_max - L |s|) / (2 + L |bend|), and |v w| <= R_m by the root of bend v^2 + s v = R_m.
+
+    Below ``ease`` (rad) the turn rate is proportional to the error, meeting the root there: the root's slope without
+    bound at 0 makes the robot shiver about its heading, which costs speed (as published: 0).
     """
-    steer = numbers.steer_gain * np.sqrt(np.abs(error))
+    size = np.abs(error)
+    steer = numbers.steer_gain * (size / np.sqrt(np.maximum(size, ease)) if ease > 0.0 else np.sqrt(size))
     bend_size = np.abs(bend)
     by_wheels = (2.0 * robot.wheel_speed - robot.track * steer) / (2.0 + robot.track * bend_size)
     # the root in its stable form: no difference of nearly equal numbers, no division by a small bend

@@ -11,7 +11,7 @@ import numpy as np
 
 from fieldnav_ros.drive import drive, limit_change, limit_wheels, wrap
 from fieldnav_ros.field.avoidance import Obstacles
-from fieldnav_ros.field.foresight import Course, Robots
+from fieldnav_ros.field.foresight import EASE, Course, Robots
 from fieldnav_ros.field.heading import Goal, Habit, guidance_course, published_vector, waits
 from fieldnav_ros.model import Robot
 from fieldnav_ros.parameters import FloatArray, Numbers
@@ -135,7 +135,7 @@ def _apart(x: Any, y: Any, goal: Goal) -> Any:
 
 def _follow(course: Course, robots: Robots, numbers: Numbers, robot: Robot) -> tuple[Any, Any, Any]:
     error = wrap(course.facing - robots.yaw)
-    v, w = drive(error, course.bend, robots.distance, numbers, robot)
+    v, w = drive(error, course.bend, robots.distance, numbers, robot, EASE)
     return course.facing, v * course.pace, w
 
 

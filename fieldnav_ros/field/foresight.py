@@ -25,6 +25,8 @@ LOOKS = 3
 HOMING_PACE = 0.7
 """Share of the largest speed at which the goal and a robot's length bound the time ahead: what is beyond does not
 matter."""
+EASE = 0.05
+"""Heading error (rad) below which the robot steers in proportion."""
 MARGIN = 0.01
 """Gap in m below which a course counts as one that touches."""
 
@@ -172,7 +174,7 @@ def look_ahead(robots: Robots, course: Course, zones: Zones, numbers: Numbers, r
     touching: Any = 0.0
     for look in range(LOOKS):
         error = wrap(facing - yaw)
-        v, w = drive(error, bend, distance, numbers, robot)
+        v, w = drive(error, bend, distance, numbers, robot, EASE)
         # a look is long, so the turn must not swing past what it is to turn
         enough = np.abs(error) / h + bend_size * v
         half = np.minimum(np.maximum(w, -enough), enough) * (0.5 * robot.track)

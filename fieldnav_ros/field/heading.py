@@ -14,7 +14,7 @@ from fieldnav_ros.model import Robot
 from fieldnav_ros.parameters import Numbers
 from fieldnav_ros.yard import Floor
 
-SIDE_STAYS = 0.01
+SIDE_STAYS = 0.005
 """Metres by which the other turning circle must be nearer before the robot changes over to it."""
 CROWDED = 1.5
 """What a second inside a guard zone costs, in seconds of way."""

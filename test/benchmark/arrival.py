@@ -158,7 +158,7 @@ def judge(way: Way, yard: Yard, grade: str, made: Any, layouts: list[Layout], es
     }
     if escapes:
         unavoidable, standing = contacts(
-            yard, [layouts[i] for i in hit], GRADES[grade][1], made, way.model, LIMIT
+            yard, [layouts[i] for i in hit], result.time[0, hit], GRADES[grade][1], made, way.model
         )  # fmt: skip
         found |= {"unavoidable": 100.0 * unavoidable / len(code), "standing": 100.0 * standing / len(code)}
     return found

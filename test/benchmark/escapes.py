@@ -8,12 +8,14 @@ import numpy as np
 
 from fieldnav_ros.drive import limit_change
 from fieldnav_ros.field.avoidance import Obstacles
+from fieldnav_ros.guide import Memory, Senses, guide
 from fieldnav_ros.model import Layout
 from fieldnav_ros.parameters import ParameterSet, stack
-from fieldnav_ros.world import batch
+from fieldnav_ros.pending import slots
 from fieldnav_ros.world import carts as others
 from fieldnav_ros.world.judge import Track, look
-from fieldnav_ros.world.plant import STEP, Motion, PlantRows, step
+from fieldnav_ros.world.noise import record
+from fieldnav_ros.world.plant import STEP, Delay, Motion, PlantRows, step
 from fieldnav_ros.yard import Plant, Yard
 
 SHARES = np.array([-1.0, -0.5, 0.0, 0.5, 1.0])
@@ -24,31 +26,44 @@ BEYOND = 20
 STANDS = 0.05
 
 
-class _Recorder(batch._Run):
-    """A run that keeps where robot and carts were before each step."""
-
-    def start_record(self) -> None:
-        self.record: list[tuple[Motion, Obstacles]] = []
-
-    def _step(self, number: int) -> None:
-        self.record.append((self.motion, self.carts))
-        super()._step(number)
+def replay(
+    yard: Yard, layout: Layout, plant: Plant, made: ParameterSet, model: str, last: int
+) -> list[tuple[Motion, Obstacles]]:
+    """Return where robot and carts were before each of the first ``last`` steps, as the batch simulator had them."""
+    motion = Motion.at_rest(*(np.array([value]) for value in (layout.start.x, layout.start.y, layout.start.yaw)))
+    goal = [np.array([value]) for value in (layout.goal.x, layout.goal.y, layout.goal.yaw)]
+    carts, rows, numbers = others.gather([layout]), PlantRows.of([plant]), stack([made])
+    delay, tapes = Delay(rows.delay), record([layout], [plant], last)
+    per_step, delayed = plant.pose_rate * STEP, plant.command_delay
+    memory = Memory.start(1, slots(delayed, STEP * int(1.0 / per_step + 1e-9)))
+    advised, due, found = -1.0 / per_step, 0, []
+    v, w = np.zeros(1), np.zeros(1)
+    for number in range(last):
+        found.append((motion, carts))
+        if number * per_step >= due:
+            due += 1
+            if not tapes.lost[number, 0]:
+                x, y, yaw = motion.x + tapes.x[number], motion.y + tapes.y[number], motion.yaw + tapes.yaw[number]
+                senses = Senses._make([x, y, yaw, *goal, carts])
+                dt = STEP * (number - advised)
+                advice = guide(senses, numbers, yard.robot, yard.floor, memory, dt, model, delayed)
+                v, w, memory, advised = advice.v, advice.w, advice.memory, float(number)
+        motion = step(motion, *delay.pass_through(v, w), yard.robot, rows, tapes.grip[number])
+        carts = others.move(carts, yard.floor, STEP)
+    return found
 
 
 def contacts(
-    yard: Yard, layouts: list[Layout], plant: Plant, made: ParameterSet, model: str, limit: float
+    yard: Yard, layouts: list[Layout], times: np.ndarray, plant: Plant, made: ParameterSet, model: str
 ) -> tuple[int, int]:
-    """Return how many of these episodes' contacts no escape avoids, and how many met a standing robot."""
+    """Return how many contacts, at these times (s) of episodes, no escape avoids, and how many met a standing robot."""
     unavoidable = standing = 0
-    for layout in layouts:
-        run = _Recorder(yard, [layout], [plant], np.arange(1), stack([made]), model, limit, plant.command_delay)
-        run.start_record()
-        run.finish()
-        last = round(float(run.time[0]) / STEP)
-        record = run.record[:last]
-        motion = record[-1][0]
+    for layout, when in zip(layouts, times):
+        last = round(float(when) / STEP)
+        steps = replay(yard, layout, plant, made, model, last)
+        motion = steps[-1][0]
         standing += bool(abs(0.5 * (motion.left[0] + motion.right[0])) < STANDS)
-        unavoidable += not any(_escapes(yard, *record[max(0, last - back)], min(back, last)) for back in MOMENTS)
+        unavoidable += not any(_escapes(yard, *steps[max(0, last - back)], min(back, last)) for back in MOMENTS)
     return unavoidable, standing
 
 
