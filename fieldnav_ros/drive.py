@@ -21,32 +21,43 @@ def wrap(angle: Any) -> Any:
     return angle - 2.0 * np.pi * np.floor(angle / (2.0 * np.pi) + 0.5)
 
 
-def drive(
-    error: Any, bend: Any, distance: Any, numbers: Numbers, robot: Robot, ease: float = 0.0
-) -> tuple[Any, Any]:
-    """Return speed (m/s) and turn rate (rad/s) for a heading error.
+class DriveLaw:
+    """The law for a given bend of the field and distance to the goal; called with heading errors.
 
-    error: field heading less yaw, rad, in [-pi, pi); bend: change of the field's heading per metre driven,
-    rad/m; distance: to the goal, m. Each (N,). The wheels stay within ``robot.wheel_speed`` by construction:
-    with v the speed and w = bend v + s the turn rate, |v| + |w| L/2 <= v_max bounds v by
-    (2 v_max - L |s|) / (2 + L |bend|), and |v w| <= R_m by the root of bend v^2 + s v = R_m.
+    bend: change of the field's heading per metre driven, rad/m; distance: to the goal, m. Each (N,) or broadcast.
+    The wheels stay within ``robot.wheel_speed`` by construction: with v the speed and w = bend v + s the turn rate,
+    |v| + |w| L/2 <= v_max bounds v by (2 v_max - L |s|) / (2 + L |bend|), and |v w| <= R_m by the root of
+    bend v^2 + s v = R_m.
 
     Below ``ease`` (rad) the turn rate is proportional to the error, meeting the root there: the root's slope without
     bound at 0 makes the robot shiver about its heading, which costs speed (as published: 0).
     """
-    size = np.abs(error)
-    steer = numbers.steer_gain * (size / np.sqrt(np.maximum(size, ease)) if ease > 0.0 else np.sqrt(size))
-    bend_size = np.abs(bend)
-    by_wheels = (2.0 * robot.wheel_speed - robot.track * steer) / (2.0 + robot.track * bend_size)
-    # the root in its stable form: no difference of nearly equal numbers, no division by a small bend
-    by_side = 2.0 * numbers.lateral_accel / np.maximum(
-        steer + np.sqrt(steer * steer + 4.0 * numbers.lateral_accel * bend_size), 1e-9
-    )  # fmt: skip
-    speed = np.minimum(np.minimum(by_wheels, by_side), numbers.arrival_gain * distance)
-    speed = np.maximum(speed, 0.0)
-    most = 2.0 * robot.wheel_speed / robot.track
-    turn = np.minimum(np.maximum(bend * speed + np.copysign(steer, error), -most), most)
-    return speed, turn
+
+    def __init__(self, bend: Any, distance: Any, numbers: Numbers, robot: Robot, ease: float = 0.0) -> None:
+        self._bend, self._gain, self._ease = bend, numbers.steer_gain, ease
+        size = np.abs(bend)
+        share = 1.0 / (2.0 + robot.track * size)
+        self._most_straight, self._per_steer = 2.0 * robot.wheel_speed * share, robot.track * share
+        self._side = 2.0 * numbers.lateral_accel
+        self._side_bend = 2.0 * self._side * size
+        self._homing = numbers.arrival_gain * distance
+        self._most_turn = 2.0 * robot.wheel_speed / robot.track
+
+    def __call__(self, error: Any) -> tuple[Any, Any]:
+        """Return speed (m/s) and turn rate (rad/s) for heading errors: field heading less yaw, rad, in [-pi, pi)."""
+        size = np.abs(error)
+        steer = self._gain * (size / np.sqrt(np.maximum(size, self._ease)) if self._ease > 0.0 else np.sqrt(size))
+        by_wheels = self._most_straight - self._per_steer * steer
+        # the root in its stable form: no difference of nearly equal numbers, no division by a small bend
+        by_side = self._side / np.maximum(steer + np.sqrt(steer * steer + self._side_bend), 1e-9)
+        speed = np.maximum(np.minimum(np.minimum(by_wheels, by_side), self._homing), 0.0)
+        turn = self._bend * speed + np.copysign(steer, error)
+        return speed, np.minimum(np.maximum(turn, -self._most_turn), self._most_turn)
+
+
+def drive(error: Any, bend: Any, distance: Any, numbers: Numbers, robot: Robot, ease: float = 0.0) -> tuple[Any, Any]:
+    """Return speed (m/s) and turn rate (rad/s) by ``DriveLaw``, each (N,)."""
+    return DriveLaw(bend, distance, numbers, robot, ease)(error)
 
 
 def limit_wheels(speed: Any, turn: Any, robot: Robot) -> tuple[Any, Any]:

@@ -9,7 +9,7 @@ from typing import Any, Literal, NamedTuple, get_args
 
 import numpy as np
 
-from fieldnav_ros.drive import drive, limit_change, limit_wheels, wrap
+from fieldnav_ros.drive import DriveLaw, limit_change, limit_wheels, wrap
 from fieldnav_ros.field.avoidance import Obstacles
 from fieldnav_ros.field.foresight import EASE, Course, Robots
 from fieldnav_ros.field.heading import Goal, Habit, guidance_course, published_vector, waits
@@ -135,7 +135,7 @@ def _apart(x: Any, y: Any, goal: Goal) -> Any:
 
 def _follow(course: Course, robots: Robots, numbers: Numbers, robot: Robot) -> tuple[Any, Any, Any]:
     error = wrap(course.facing - robots.yaw)
-    v, w = drive(error, course.bend, robots.distance, numbers, robot, EASE)
+    v, w = DriveLaw(course.bend, robots.distance, numbers, robot, EASE)(error)
     return course.facing, v * course.pace, w
 
 
@@ -152,5 +152,5 @@ def _published(
     next_x, next_y = field(robots.x + PROBE * cos_yaw, robots.y + PROBE * sin_yaw)
     heading = np.arctan2(here_y, here_x)
     turned = np.arctan2(here_x * next_y - here_y * next_x, here_x * next_x + here_y * next_y)
-    v, w = drive(wrap(heading - robots.yaw), turned / PROBE, robots.distance, numbers, robot)
+    v, w = DriveLaw(turned / PROBE, robots.distance, numbers, robot)(wrap(heading - robots.yaw))
     return heading, v, w

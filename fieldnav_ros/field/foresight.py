@@ -14,7 +14,7 @@ from typing import Any, NamedTuple
 
 import numpy as np
 
-from fieldnav_ros.drive import drive, limit_change, wrap
+from fieldnav_ros.drive import DriveLaw, limit_change, wrap
 from fieldnav_ros.field.avoidance import Obstacles
 from fieldnav_ros.model import Robot
 from fieldnav_ros.parameters import Numbers
@@ -29,6 +29,10 @@ EASE = 0.05
 """Heading error (rad) below which the robot steers in proportion."""
 MARGIN = 0.01
 """Gap in m below which a course counts as one that touches."""
+
+_LOOK_TIMES = np.arange(1.0, LOOKS + 1.0, dtype=np.float32)[:, None]
+_SOON = np.float32(1.5) - np.arange(LOOKS, dtype=np.float32)[:, None, None] / LOOKS
+_BOTH = np.array([-1.0, 1.0], np.float32)[:, None, None]
 
 
 class Course(NamedTuple):
@@ -71,122 +75,115 @@ class Robots(NamedTuple):
 class Zones(NamedTuple):
     """Guard zones and edges of obstacles and walls at each look, seen from where each robot is now; single precision.
 
-    ``h``: seconds from look to look, (N,). Obstacles: places (m; (K, M, N)), and with a distance d to them
+    ``h``: seconds from look to look, (N,). Obstacles: ``places`` in m, (K, 2, M, N); with a distance d to them
     ``level - scale d^2`` is 0 at the outer edge of the guard zone and 1 at the inner, which needs no root; ``contact``
-    is the square of the distance that counts as touching (M, N). Walls: the way to each of the four (N,), empty without
-    a floor; ``wall_level - gap / fade`` as above; ``wall_contact`` in m.
+    is the square of the distance that counts as touching; (M, N). Walls: the way to the low and the high ones, (2, N),
+    infinite without a floor; ``wall_level - gap per_fade`` as above; ``wall_contact`` in m.
     """
 
     h: Any
-    x: Any
-    y: Any
+    places: Any
     level: Any
     scale: Any
     contact: Any
-    walls: Any
+    to_low: Any
+    to_high: Any
     wall_level: Any
     per_fade: Any
     wall_contact: float
 
     @classmethod
     def of(cls, robots: Robots, obstacles: Obstacles, numbers: Numbers, robot: Robot, floor: Floor | None) -> Zones:
-        """Look ``motion_lead`` seconds ahead, or as long as the goal is away.
+        """Look ``motion_lead`` seconds ahead, or as long as the goal is away. ``numbers`` in single precision.
 
         Obstacles keep their velocity; they do not go through walls but are taken to be turned back by them.
         """
-        lead, guard, fade = (
-            np.asarray(part, np.float32) for part in (numbers.motion_lead, numbers.guard_distance, numbers.guard_fade)
-        )
+        rows = len(robots.x)
         homing = (robots.distance + 2.0 * robot.radius) / (HOMING_PACE * robot.wheel_speed)
-        h = np.maximum(np.minimum(lead, homing.astype(np.float32)) / LOOKS, np.float32(1e-3))
-        radius = obstacles.radius.astype(np.float32)
-        inner = guard + (radius - robot.radius)
-        outer = inner + 2.0 * fade
-        scale = 1.0 / (outer * outer - inner * inner)
-        x = _places(obstacles.x, obstacles.vx, obstacles.radius, robots.x, h, floor.x if floor else None)
-        y = _places(obstacles.y, obstacles.vy, obstacles.radius, robots.y, h, floor.y if floor else None)
-        contact = np.square(radius + (robot.radius + MARGIN))
-        walls = np.empty((0, len(robots.x)), np.float32)
+        h = np.maximum(np.minimum(numbers.motion_lead, homing.astype(np.float32)) / LOOKS, np.float32(1e-3))
+        low, high = np.full((2, 1), -np.inf), np.full((2, 1), np.inf)
         if floor is not None:
-            sides = (robots.x - floor.x[0], floor.x[1] - robots.x, robots.y - floor.y[0], floor.y[1] - robots.y)
-            walls = np.array(sides, np.float32)
+            low, high = np.array([floor.x, floor.y]).T[:, :, None]
+        origin = np.array([robots.x, robots.y])
+        inner = numbers.guard_distance + (obstacles.radius.astype(np.float32) - robot.radius)
+        outer = inner + 2.0 * numbers.guard_fade
+        scale = 1.0 / (outer * outer - inner * inner)
+        contact = np.square((obstacles.radius + (robot.radius + MARGIN)).astype(np.float32))
         # a wall is a disc of no size: what the guard distance keeps from an obstacle's centre, less the obstacle
-        per_fade = 1.0 / np.broadcast_to(fade, h.shape)
-        wall_level = (guard - robot.radius) * per_fade + 1.0
+        per_fade = np.broadcast_to(1.0 / numbers.guard_fade, (rows,))
+        wall_level = np.broadcast_to((numbers.guard_distance - robot.radius) * per_fade + 1.0, (rows,))
         edge = (robot.radius if floor is None or floor.walled else 0.0) + MARGIN
-        return cls(h, x, y, outer * outer * scale, scale, contact, walls, wall_level, per_fade, edge)
+        return cls(
+            h, _places(obstacles, origin, h, low, high, floor is not None), outer * outer * scale, scale, contact,
+            (origin - low).astype(np.float32), (high - origin).astype(np.float32), wall_level, per_fade, edge,
+        )  # fmt: skip
 
     def take(self, rows: Any) -> Zones:
         """Return the zones of the rows that an index or mask picks."""
-        return Zones._make([*(part[..., rows] for part in self[:-1]), self.wall_contact])
+        return self._replace(**{name: part[..., rows] for name, part in zip(self._fields[:-1], self[:-1])})
 
-    def at(self, look: int, x: Any, y: Any) -> tuple[Any, Any]:
-        """Return how deep in a zone (0 to 1 and beyond) and whether touching, at a look, at x, y (m; (C, N))."""
-        deep: Any = np.float32(0.0)
-        touch: Any = False
-        if self.x.shape[1]:
-            square = x - self.x[look][:, None]
+    def along(self, track: Any) -> tuple[Any, Any]:
+        """Return how deep in a zone (0 to 1 and on) and whether touching, (K, C, N), on tracks in m (K, 2, C, N)."""
+        gap = np.minimum.reduce(np.minimum(self.to_low[:, None] + track, self.to_high[:, None] - track), axis=1)
+        deep, touch = self.wall_level - gap * self.per_fade, gap < self.wall_contact
+        if self.places.shape[2]:
+            square = track[:, :, None] - self.places[:, :, :, None]
             square *= square
-            dy = y - self.y[look][:, None]
-            dy *= dy
-            square += dy
-            touch = np.minimum.reduce(square - self.contact[:, None]) < 0.0
+            square = square[:, 0] + square[:, 1]
+            touch |= np.minimum.reduce(square - self.contact[:, None], axis=1) < 0.0
             square *= self.scale[:, None]
-            deep = np.maximum.reduce(self.level[:, None] - square)
-        if len(self.walls):
-            west, east, south, north = self.walls
-            gap = np.minimum(np.minimum(west + x, east - x), np.minimum(south + y, north - y))
-            deep = np.maximum(deep, self.wall_level - gap * self.per_fade)
-            touch = touch | (gap < self.wall_contact)
+            deep = np.maximum(deep, np.maximum.reduce(self.level[:, None] - square, axis=1))
         return deep, touch
 
 
-def _places(
-    place: Any, speed: Any, radius: Any, origin: Any, h: Any, side: tuple[float, float] | None
-) -> Any:
-    """Return one coordinate of the obstacles at each look, less ``origin``, (K, M, N)."""
-    looks = np.arange(1.0, LOOKS + 1.0, dtype=np.float32)[:, None, None]
-    places = (place - origin).astype(np.float32) + (looks * h) * speed.astype(np.float32)
-    if side is not None:
-        low, high = ((side[0] + radius) - origin).astype(np.float32), ((side[1] - radius) - origin).astype(np.float32)
-        for wall, sign in ((low, 1.0), (high, -1.0)):
-            places -= wall
+def _places(obstacles: Obstacles, origin: Any, h: Any, low: Any, high: Any, walled: bool) -> Any:
+    """Return where the obstacles are at each look, less ``origin``, (K, 2, M, N)."""
+    speed = np.array([obstacles.vx, obstacles.vy], np.float32)
+    start = (np.array([obstacles.x, obstacles.y]) - origin[:, None]).astype(np.float32)
+    places = start + (_LOOK_TIMES * h)[:, None, None] * speed
+    if walled and len(obstacles.x):
+        for wall, sign in ((low[:, None] + obstacles.radius, 1.0), (high[:, None] - obstacles.radius, -1.0)):
+            edge = (wall - origin[:, None]).astype(np.float32)
+            places -= edge
             np.abs(places, out=places)
             places *= sign
-            places += wall
+            places += edge
     return places
 
 
 def look_ahead(robots: Robots, course: Course, zones: Zones, numbers: Numbers, robot: Robot) -> Ahead:
-    """Drive each course ahead to the last look of ``zones``, and say what comes of it.
+    """Drive each course ahead to the last look of ``zones``, and say what comes of it. ``numbers`` in single precision.
 
     Reckoned in single precision about the robot's own place: a thought, not a command, and twice as fast.
     """
-    numbers = Numbers(*(np.asarray(part, np.float32) for part in numbers))
     facing, bend, pace = (np.asarray(part, np.float32) for part in course)
-    yaw, left, right, distance = (np.asarray(part, np.float32) for part in robots[2:])
     h = zones.h
-    most, quarter, bend_size = robot.wheel_accel * h, 0.25 * h, np.abs(bend)
-    turning = quarter * (2.0 / robot.track)
-    x: Any = 0.0
-    y: Any = 0.0
-    crowding: Any = 0.0
-    touching: Any = 0.0
+    yaw, left, right, distance = np.array(robots[2:], np.float32)
+    wheels = np.array([left, right])[:, None]
+    law = DriveLaw(bend, distance, numbers, robot, EASE)
+    most, quarter, turning = robot.wheel_accel * h, 0.25 * h, (0.5 / robot.track) * h
+    bend_size, per_look = np.abs(bend), 1.0 / h
+    error = wrap(facing - yaw)
+    track = np.empty((LOOKS, 2, *error.shape), np.float32)
+    place: Any = 0.0
     for look in range(LOOKS):
-        error = wrap(facing - yaw)
-        v, w = drive(error, bend, distance, numbers, robot, EASE)
+        v, w = law(error)
         # a look is long, so the turn must not swing past what it is to turn
-        enough = np.abs(error) / h + bend_size * v
+        enough = np.abs(error) * per_look + bend_size * v
         half = np.minimum(np.maximum(w, -enough), enough) * (0.5 * robot.track)
-        v = v * pace
-        new_left, new_right = limit_change(v - half, left, most), limit_change(v + half, right, most)
-        to_left, to_right = left + new_left, right + new_right
-        left, right = new_left, new_right
-        travel, turned = quarter * (to_left + to_right), turning * (to_right - to_left)
+        new = limit_change(v * pace + _BOTH * half, wheels, most)
+        wheels = wheels + new
+        travel, turned = quarter * (wheels[0] + wheels[1]), turning * (wheels[1] - wheels[0])
+        wheels = new
         middle = yaw + 0.5 * turned
-        x, y, yaw = x + travel * np.cos(middle), y + travel * np.sin(middle), yaw + turned
-        facing = facing + bend * travel
-        deep, touch = zones.at(look, x, y)
-        crowding = crowding + np.minimum(np.maximum(deep, 0.0), 1.0)
-        touching = np.maximum(touching, touch * np.float32(1.5 - look / LOOKS))
-    return Ahead(robots.x + x, robots.y + y, yaw, h * crowding, touching)
+        ahead = track[look]
+        np.cos(middle, out=ahead[0])
+        np.sin(middle, out=ahead[1])
+        ahead *= travel
+        ahead += place
+        place = ahead
+        yaw = yaw + turned
+        error = error + (bend * travel - turned)
+    deep, touch = zones.along(track)
+    crowding = np.minimum(np.maximum(deep, 0.0), 1.0).sum(axis=0) * h
+    return Ahead(robots.x + place[0], robots.y + place[1], yaw, crowding, (_SOON * touch).max(axis=0))

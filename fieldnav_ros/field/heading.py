@@ -29,10 +29,14 @@ PATIENCE = 2.0
 STANDS = 0.15
 """Mean wheel speed (m/s) below which the robot counts as waiting."""
 
-# steps of ``sidestep`` to both sides at full pace and the wanted course slowly; then standing, and straight back
-_STEPS = np.array([1.0, -1.0, 2.0, -2.0, 4.0, -4.0, 0.0])[:, None]
-_PACES = np.array([*[1.0] * len(_STEPS), 0.4, 0.0, -1.0])[:, None]  # the wanted course first
-_STANDING = len(_PACES) - 2
+_FEW = 64
+"""Up to so many rows all courses are thought through at once: fewer calls of NumPy are worth more than idle numbers."""
+
+# the wanted course first, then steps of ``sidestep`` to both sides, the wanted course slowly; standing; straight back
+_STEPS = np.array([0.0, 1.0, -1.0, 2.0, -2.0, 4.0, -4.0, 0.0])[:, None]
+_PACES = np.array([*[1.0] * (len(_STEPS) - 1), 0.4, 0.0, -1.0])[:, None]
+_STANDING, _BACK = len(_STEPS), len(_STEPS) + 1
+_SIDES = np.array([[1.0], [-1.0]])
 
 
 class Goal(NamedTuple):
@@ -80,72 +84,76 @@ def guidance_course(
     and backing, by the way left at the end and the crowding and touching until then. All obstacles and walls count.
     """
     x, y = goal.frame(robots.x, robots.y)
-    radii = [open_radius(x, y, side, _roomy_radius(side, goal, numbers, robot, floor)) for side in (1.0, -1.0)]
-    left, right = (way_left(x, y, side, radius) for side, radius in zip((1.0, -1.0), radii))
-    side = np.where(left - right < SIDE_STAYS * habit.side, 1.0, -1.0)
-    radius = np.where(side > 0.0, *radii)
+    radii = open_radius(x, y, _SIDES, _roomy_radius(goal, numbers, robot, floor))
+    ways = way_left(x, y, _SIDES, radii)
+    left = ways[0] - ways[1] < SIDE_STAYS * habit.side
+    side, radius = np.where(left, 1.0, -1.0), np.where(left, radii[0], radii[1])
     cos_yaw, sin_yaw = np.cos(robots.yaw), np.sin(robots.yaw)
     along, across = goal.cos * cos_yaw + goal.sin * sin_yaw, goal.cos * sin_yaw - goal.sin * cos_yaw
     heading, bend = circle_course(x, y, side, radius, numbers.turn_softness, along, across)
-    facing = wrap(heading + np.arctan2(goal.sin, goal.cos))
-    course = Course(facing, bend, np.ones_like(facing))
-    wanted = Course(facing[None], bend[None], 1.0)
-    zones = Zones.of(robots, obstacles, numbers, robot, floor)
-    ahead = look_ahead(robots, wanted, zones, numbers, robot)
-    troubled = np.flatnonzero(ahead.crowding[0] + ahead.touching[0] > 0.0)
-    if troubled.size:
-        _resolve(
-            course, troubled, robots.take(troubled), goal.take(troubled), zones.take(troubled),
-            Numbers(*(part[troubled] if np.ndim(part) else part for part in numbers)), robot,
-            habit.take(troubled), side[troubled], radius[troubled], Ahead(*(part[:, troubled] for part in ahead)),
-        )  # fmt: skip
+    wanted = wrap(heading + np.arctan2(goal.sin, goal.cos))
+    course = Course(wanted, bend, np.ones_like(wanted))
+    thin = Numbers(*np.array(numbers, np.float32))
+    zones = Zones.of(robots, obstacles, thin, robot, floor)
+    tried = len(_PACES) if len(wanted) <= _FEW else 1
+    ahead = look_ahead(robots, _courses(course, robots, numbers, slice(tried)), zones, thin, robot)
+    rows = np.flatnonzero(ahead.crowding[0] + ahead.touching[0] > 0.0)
+    if rows.size:
+        ahead = Ahead(*(part[:, rows] for part in ahead))
+        some, numbers = robots.take(rows), _take(numbers, rows)
+        courses = _courses(Course(*(part[rows] for part in course)), some, numbers, slice(None))
+        if tried == 1:
+            rest = Course(*(part[1:] for part in courses))
+            more = look_ahead(some, rest, zones.take(rows), _take(thin, rows), robot)
+            ahead = Ahead(*(np.concatenate(parts) for parts in zip(ahead, more)))
+        best = _best(courses, ahead, robot, goal.take(rows), habit.take(rows), side[rows], radius[rows])
+        chosen = best, np.arange(len(rows))
+        course.facing[rows], course.bend[rows] = courses.facing[chosen], courses.bend[chosen]
+        course.pace[rows] = _PACES[best, 0]
     return course, side
 
 
-def _roomy_radius(side: float, goal: Goal, numbers: Numbers, robot: Robot, floor: Floor | None) -> Any:
-    """Return d_e, or less where the circle on that side of the goal would not keep the guard distance from a wall."""
-    radius = numbers.turn_radius
+def _take(numbers: Numbers, rows: Any) -> Numbers:
+    return Numbers(*(part[rows] if np.ndim(part) else part for part in numbers))
+
+
+def _courses(wanted: Course, robots: Robots, numbers: Numbers, which: slice) -> Course:
+    """Return the courses to compare (C, N), the wanted one first."""
+    if which == slice(1):
+        return Course(wanted.facing[None], wanted.bend[None], 1.0)
+    facing = np.empty((len(_PACES), len(wanted.facing)))
+    facing[: len(_STEPS)] = wanted.facing + numbers.sidestep * _STEPS
+    facing[len(_STEPS) :] = robots.yaw
+    bend = np.zeros_like(facing)
+    bend[0] = wanted.bend
+    return Course(facing, bend, _PACES)
+
+
+def _best(courses: Course, ahead: Ahead, robot: Robot, goal: Goal, habit: Habit, side: Any, radius: Any) -> Any:
+    """Return the number of the best course for each row: by the way left at its end, crowding and touching."""
+    length = way_left(*goal.frame(ahead.x, ahead.y), side, radius)
+    same = habit.course_x * np.cos(courses.facing) + habit.course_y * np.sin(courses.facing)
+    same[_BACK] *= -1.0  # backing goes the other way
+    price = length / robot.wheel_speed + CROWDED * ahead.crowding + TOUCHED * ahead.touching
+    price -= COURSE_STAYS * (1.0 + WAITED * habit.waited) * same
+    price[_STANDING] += habit.waited
+    return np.argmin(price, axis=0)
+
+
+def _roomy_radius(goal: Goal, numbers: Numbers, robot: Robot, floor: Floor | None) -> Any:
+    """Return d_e, or less where a circle beside the goal would not keep the guard distance from a wall.
+
+    Shape (2, N): the anticlockwise circle on the goal's left, the clockwise one on its right.
+    """
+    radius = numbers.turn_radius + np.zeros((2, 1))
     if floor is None:
         return radius
     gap = np.maximum(numbers.guard_distance - robot.radius, robot.radius + MARGIN)
     # from the goal the circle reaches r (1 + n) towards a wall, n the share of its centre's direction that way
-    toward_x, toward_y = -side * goal.sin, side * goal.cos
-    for place, toward, (low, high) in ((goal.x, toward_x, floor.x), (goal.y, toward_y, floor.y)):
+    for place, toward, (low, high) in ((goal.x, -_SIDES * goal.sin, floor.x), (goal.y, _SIDES * goal.cos, floor.y)):
         radius = np.minimum(radius, (high - gap - place) / np.maximum(1.0 + toward, 1e-3))
         radius = np.minimum(radius, (place - gap - low) / np.maximum(1.0 - toward, 1e-3))
     return np.maximum(radius, TIGHTEST)
-
-
-def _resolve(
-    course: Course,
-    rows: Any,
-    robots: Robots,
-    goal: Goal,
-    zones: Zones,
-    numbers: Numbers,
-    robot: Robot,
-    habit: Habit,
-    side: Any,
-    radius: Any,
-    ahead: Ahead,
-) -> None:
-    """Put the best of a few courses in place of the wanted one, for the rows where that one meets trouble."""
-    facing = course.facing[rows]
-    others = facing + numbers.sidestep * _STEPS
-    candidates = np.concatenate([others, robots.yaw[None], robots.yaw[None]])
-    tried = look_ahead(robots, Course(candidates, 0.0, _PACES[1:]), zones, numbers, robot)
-    facings = np.concatenate([facing[None], candidates])
-    ends = Ahead(*(np.concatenate(parts) for parts in zip(ahead, tried)))
-    length = way_left(*goal.frame(ends.x, ends.y), side, radius)
-    same = habit.course_x * np.cos(facings) + habit.course_y * np.sin(facings)
-    same[-1] *= -1.0  # backing goes the other way
-    price = length / robot.wheel_speed + CROWDED * ends.crowding + TOUCHED * ends.touching
-    price -= COURSE_STAYS * (1.0 + WAITED * habit.waited) * same
-    price[_STANDING] += habit.waited
-    best = np.argmin(price, axis=0)
-    course.facing[rows] = np.take_along_axis(facings, best[None], 0)[0]
-    course.bend[rows] = np.where(best == 0, course.bend[rows], 0.0)
-    course.pace[rows] = _PACES[best, 0]
 
 
 def waits(waited: Any, left: Any, right: Any, dt: Any) -> Any:

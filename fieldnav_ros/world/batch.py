@@ -174,7 +174,8 @@ class _Run:
                 self._compact()
             if not self.running:
                 break
-        self.clearance[self.index] = self.least
+        left = ~self.done  # rows that ended have theirs: what came after their end does not count
+        self.clearance[self.index[left]] = self.least[left]
         return self.code, self.time, self.clearance, self.steps
 
     def _advise(self, number: int) -> None:

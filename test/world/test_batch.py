@@ -78,7 +78,8 @@ def test_a_result_does_not_depend_on_chunks_and_compaction(
 ) -> None:
     layouts = mixed(5)
     plants = [Plant(slip=0.1, pose_noise=0.003, pose_loss=0.2, command_delay=0.01 * i) for i in range(len(layouts))]
-    sets = [DEFAULTS, DEFAULTS.model_copy(update={"steer_gain": 9.0})]
+    brisk = DEFAULTS.model_copy(update={"arrival_gain": 20.0, "lateral_accel": 6.0})
+    sets = [brisk, brisk.model_copy(update={"steer_gain": 9.0})]
     usual = simulate(YARD, "moving", layouts, sets, plants, time_limit=3.0)
     monkeypatch.setattr(batch, name, value)
     other = simulate(YARD, "moving", layouts, sets, plants, time_limit=3.0)
