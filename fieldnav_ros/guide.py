@@ -135,7 +135,7 @@ def _apart(x: Any, y: Any, goal: Goal) -> Any:
 
 def _follow(course: Course, robots: Robots, numbers: Numbers, robot: Robot) -> tuple[Any, Any, Any]:
     error = wrap(course.facing - robots.yaw)
-    v, w = DriveLaw(course.bend, robots.distance, numbers, robot, EASE)(error)
+    v, w = DriveLaw(course.bend, course.distance, numbers, robot, EASE)(error)
     return course.facing, v * course.pace, w
 
 

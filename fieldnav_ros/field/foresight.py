@@ -34,20 +34,28 @@ _LOOK_TIMES = np.arange(1.0, LOOKS + 1.0, dtype=np.float32)[:, None]
 _SOON = np.float32(1.5) - np.arange(LOOKS, dtype=np.float32)[:, None, None] / LOOKS
 _BOTH = np.array([-1.0, 1.0], np.float32)[:, None, None]
 
+NOWHERE = 1e3
+"""A distance (m) that slows no robot."""
+
 
 class Course(NamedTuple):
-    """Courses to think through: yaw to take (rad), its bend (rad/m), signed share of the speed; (C, N) or broadcast."""
+    """Courses to think through: yaw to take (rad), its bend (rad/m), signed share of the speed; (C, N) or broadcast.
+
+    ``distance`` (m) is that to the goal, with which the speed falls; ``NOWHERE`` for a course that only gets out of
+    the way: a robot that creeps near its goal must not be run over because of that.
+    """
 
     facing: Any
     bend: Any
     pace: Any
+    distance: Any
 
 
 class Ahead(NamedTuple):
     """What comes of courses, each (C, N): where the robot is at the end (m, m, rad), crowding (s), touching.
 
     Crowding is the time spent in guard zones of obstacles and walls, weighted from 0 at their outer edge to 1 at the
-    inner, the worst at each look counting; touching is 0, or 0.5 to 1.5 and the larger the sooner it happens.
+    inner, the worst at each look counting; touching is 0, or 0.8 to 3 and the larger the sooner and the deeper.
     """
 
     x: Any
@@ -76,8 +84,8 @@ class Zones(NamedTuple):
     """Guard zones and edges of obstacles and walls at each look, seen from where each robot is now; single precision.
 
     ``h``: seconds from look to look, (N,). Obstacles: ``places`` in m, (K, 2, M, N); with a distance d to them
-    ``level - scale d^2`` is 0 at the outer edge of the guard zone and 1 at the inner, which needs no root; ``contact``
-    is the square of the distance that counts as touching; (M, N). Walls: the way to the low and the high ones, (2, N),
+    ``level - scale d^2`` is 0 at the outer edge of the guard zone and 1 at the inner, which needs no root, and
+    ``1 - d^2 per_contact`` is 0 where touching begins; (M, N). Walls: the way to the low and the high ones, (2, N),
     infinite without a floor; ``wall_level - gap per_fade`` as above; ``wall_contact`` in m.
     """
 
@@ -85,7 +93,7 @@ class Zones(NamedTuple):
     places: Any
     level: Any
     scale: Any
-    contact: Any
+    per_contact: Any
     to_low: Any
     to_high: Any
     wall_level: Any
@@ -108,13 +116,13 @@ class Zones(NamedTuple):
         inner = numbers.guard_distance + (obstacles.radius.astype(np.float32) - robot.radius)
         outer = inner + 2.0 * numbers.guard_fade
         scale = 1.0 / (outer * outer - inner * inner)
-        contact = np.square((obstacles.radius + (robot.radius + MARGIN)).astype(np.float32))
+        per_contact = np.square(1.0 / (obstacles.radius + (robot.radius + MARGIN)).astype(np.float32))
         # a wall is a disc of no size: what the guard distance keeps from an obstacle's centre, less the obstacle
         per_fade = np.broadcast_to(1.0 / numbers.guard_fade, (rows,))
         wall_level = np.broadcast_to((numbers.guard_distance - robot.radius) * per_fade + 1.0, (rows,))
         edge = (robot.radius if floor is None or floor.walled else 0.0) + MARGIN
         return cls(
-            h, _places(obstacles, origin, h, low, high, floor is not None), outer * outer * scale, scale, contact,
+            h, _places(obstacles, origin, h, low, high, floor is not None), outer * outer * scale, scale, per_contact,
             (origin - low).astype(np.float32), (high - origin).astype(np.float32), wall_level, per_fade, edge,
         )  # fmt: skip
 
@@ -123,14 +131,17 @@ class Zones(NamedTuple):
         return self._replace(**{name: part[..., rows] for name, part in zip(self._fields[:-1], self[:-1])})
 
     def along(self, track: Any) -> tuple[Any, Any]:
-        """Return how deep in a zone (0 to 1 and on) and whether touching, (K, C, N), on tracks in m (K, 2, C, N)."""
+        """Return how deep in a zone (0 to 1 and on) and in a touch (0 to 1), (K, C, N), on tracks in m (K, 2, C, N).
+
+        Below 0 they are outside.
+        """
         gap = np.minimum.reduce(np.minimum(self.to_low[:, None] + track, self.to_high[:, None] - track), axis=1)
-        deep, touch = self.wall_level - gap * self.per_fade, gap < self.wall_contact
+        deep, touch = self.wall_level - gap * self.per_fade, 1.0 - gap * np.float32(1.0 / self.wall_contact)
         if self.places.shape[2]:
             square = track[:, :, None] - self.places[:, :, :, None]
             square *= square
             square = square[:, 0] + square[:, 1]
-            touch |= np.minimum.reduce(square - self.contact[:, None], axis=1) < 0.0
+            touch = np.maximum(touch, 1.0 - np.minimum.reduce(square * self.per_contact[:, None], axis=1))
             square *= self.scale[:, None]
             deep = np.maximum(deep, np.maximum.reduce(self.level[:, None] - square, axis=1))
         return deep, touch
@@ -156,9 +167,9 @@ def look_ahead(robots: Robots, course: Course, zones: Zones, numbers: Numbers, r
 
     Reckoned in single precision about the robot's own place: a thought, not a command, and twice as fast.
     """
-    facing, bend, pace = (np.asarray(part, np.float32) for part in course)
+    facing, bend, pace, distance = (np.asarray(part, np.float32) for part in course)
     h = zones.h
-    yaw, left, right, distance = np.array(robots[2:], np.float32)
+    yaw, left, right = np.array(robots[2:5], np.float32)
     wheels = np.array([left, right])[:, None]
     law = DriveLaw(bend, distance, numbers, robot, EASE)
     most, quarter, turning = robot.wheel_accel * h, 0.25 * h, (0.5 / robot.track) * h
@@ -186,4 +197,5 @@ def look_ahead(robots: Robots, course: Course, zones: Zones, numbers: Numbers, r
         error = error + (bend * travel - turned)
     deep, touch = zones.along(track)
     crowding = np.minimum(np.maximum(deep, 0.0), 1.0).sum(axis=0) * h
-    return Ahead(robots.x + place[0], robots.y + place[1], yaw, crowding, (_SOON * touch).max(axis=0))
+    touching = (_SOON * np.where(touch > 0.0, 1.0 + np.minimum(touch, 1.0), 0.0)).max(axis=0)
+    return Ahead(robots.x + place[0], robots.y + place[1], yaw, crowding, touching)

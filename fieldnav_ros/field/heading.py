@@ -9,7 +9,7 @@ import numpy as np
 from fieldnav_ros.drive import wrap
 from fieldnav_ros.field.approach import TIGHTEST, approach_vector, circle_course, open_radius, way_left
 from fieldnav_ros.field.avoidance import Obstacles, guard_weight, nearest_repulsion
-from fieldnav_ros.field.foresight import MARGIN, Ahead, Course, Robots, Zones, look_ahead
+from fieldnav_ros.field.foresight import MARGIN, NOWHERE, Ahead, Course, Robots, Zones, look_ahead
 from fieldnav_ros.model import Robot
 from fieldnav_ros.parameters import Numbers
 from fieldnav_ros.yard import Floor
@@ -35,7 +35,7 @@ _FEW = 64
 # the wanted course first, then steps of ``sidestep`` to both sides, the wanted course slowly; standing; straight back
 _STEPS = np.array([0.0, 1.0, -1.0, 2.0, -2.0, 4.0, -4.0, 0.0])[:, None]
 _PACES = np.array([*[1.0] * (len(_STEPS) - 1), 0.4, 0.0, -1.0])[:, None]
-_STANDING, _BACK = len(_STEPS), len(_STEPS) + 1
+_SLOW, _STANDING, _BACK = range(len(_STEPS) - 1, len(_PACES))
 _SIDES = np.array([[1.0], [-1.0]])
 
 
@@ -92,7 +92,7 @@ def guidance_course(
     along, across = goal.cos * cos_yaw + goal.sin * sin_yaw, goal.cos * sin_yaw - goal.sin * cos_yaw
     heading, bend = circle_course(x, y, side, radius, numbers.turn_softness, along, across)
     wanted = wrap(heading + np.arctan2(goal.sin, goal.cos))
-    course = Course(wanted, bend, np.ones_like(wanted))
+    course = Course(wanted, bend, np.ones_like(wanted), robots.distance.copy())
     thin = Numbers(*np.array(numbers, np.float32))
     zones = Zones.of(robots, obstacles, thin, robot, floor)
     tried = len(_PACES) if len(wanted) <= _FEW else 1
@@ -109,7 +109,7 @@ def guidance_course(
         best = _best(courses, ahead, robot, goal.take(rows), habit.take(rows), side[rows], radius[rows])
         chosen = best, np.arange(len(rows))
         course.facing[rows], course.bend[rows] = courses.facing[chosen], courses.bend[chosen]
-        course.pace[rows] = _PACES[best, 0]
+        course.pace[rows], course.distance[rows] = _PACES[best, 0], courses.distance[chosen]
     return course, side
 
 
@@ -120,13 +120,15 @@ def _take(numbers: Numbers, rows: Any) -> Numbers:
 def _courses(wanted: Course, robots: Robots, numbers: Numbers, which: slice) -> Course:
     """Return the courses to compare (C, N), the wanted one first."""
     if which == slice(1):
-        return Course(wanted.facing[None], wanted.bend[None], 1.0)
+        return Course(wanted.facing[None], wanted.bend[None], 1.0, wanted.distance[None])
     facing = np.empty((len(_PACES), len(wanted.facing)))
     facing[: len(_STEPS)] = wanted.facing + numbers.sidestep * _STEPS
     facing[len(_STEPS) :] = robots.yaw
     bend = np.zeros_like(facing)
     bend[0] = wanted.bend
-    return Course(facing, bend, _PACES)
+    distance = np.full_like(facing, NOWHERE)
+    distance[[0, _SLOW]] = wanted.distance
+    return Course(facing, bend, _PACES, distance)
 
 
 def _best(courses: Course, ahead: Ahead, robot: Robot, goal: Goal, habit: Habit, side: Any, radius: Any) -> Any:

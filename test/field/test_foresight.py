@@ -41,7 +41,7 @@ def thin(numbers: ParameterSet) -> Numbers:
 def touch_at(seen: Zones, x: float, y: float) -> tuple[float, bool]:
     """Return depth and touching at a place that is kept for all looks, as they are at the first."""
     deep, touch = seen.along(np.broadcast_to(np.array([x, y], np.float32)[:, None, None], (LOOKS, 2, 1, 1)))
-    return float(deep[0, 0, 0]), bool(touch[0, 0, 0])
+    return float(deep[0, 0, 0]), bool(touch[0, 0, 0] > 0.0)
 
 
 def zones(robot: Robots, obstacles: Obstacles, numbers: ParameterSet = DEFAULTS, floor: Floor | None = FLOOR) -> Zones:
@@ -61,7 +61,7 @@ def test_it_ends_where_the_plant_would_be() -> None:
         lead, steer = rng.uniform(0.1, 0.4), rng.uniform(3.0, 10.0)
         numbers = DEFAULTS.model_copy(update={"motion_lead": lead, "steer_gain": steer})
         start = robots(1.2, 0.8, yaw, left, right)
-        course = Course(np.array([[facing]]), np.array([[0.0]]), 1.0)
+        course = Course(np.array([[facing]]), np.array([[0.0]]), 1.0, 5.0)
         ahead = look_ahead(start, course, zones(start, crowd(), numbers), thin(numbers), ROBOT)
         motion, plant = Motion(*(part.copy() for part in start[:5])), PlantRows.of([Plant()])
         for _ in range(round(lead / STEP)):
@@ -118,7 +118,7 @@ def test_walls_and_edges_are_kept_off(walled: bool, kept: float) -> None:
 
 
 def test_sooner_touches_weigh_more_and_a_clear_way_nothing() -> None:
-    course = Course(np.array([[0.0], [math.pi]]), 0.0, 1.0)
+    course = Course(np.array([[0.0], [math.pi]]), 0.0, 1.0, 5.0)
     found = {}
     for ahead in (0.2, 0.45):
         start = robots(1.2, 0.8, 0.0, 1.0, 1.0)
