@@ -62,6 +62,8 @@ class PilotRules:
 
 
 NO_GOAL = Halt("no_goal", "waiting for a goal", fault=False)
+NO_EPISODE = Halt("no_goal", "waiting for an episode", fault=False)
+"""In lockstep the goal may come before the request; driving for that while would differ from time to time."""
 
 
 class Pilot:
@@ -179,6 +181,8 @@ class Pilot:
             return self._stand(NO_GOAL)
         if self._blind:
             return self._stand(Halt("bad_obstacles", next(iter(self._blind.values()))))
+        if self.episode is None and self.rules.match_stamps:
+            return self._stand(NO_EPISODE)
         halt = self._overdue(reading) if self.episode is not None else self._arrival(reading, goal)
         if halt is not None:
             return self._stand(halt)

@@ -186,11 +186,23 @@ def test_obstacles_that_cannot_be_used_stop_until_they_can() -> None:
 
 def test_lockstep_waits_for_the_obstacles_of_the_very_moment() -> None:
     made = pilot(match_stamps=True)
+    made.start_episode("e", GOAL, 5.0)
     assert give(made, pose(0)) is None
     made.crowd.see(Sighting(START + 1, np.zeros((2, 0))), START + 1)
     assert made.on_obstacles("obstacles") is None
     made.crowd.see(Sighting(START + 20 * MS, np.zeros((2, 0))), 0)
     assert give(made, pose(20)) is not None
+
+
+def test_a_goal_that_comes_before_its_episode_moves_nothing_in_lockstep() -> None:
+    """Or the first step would hang on which of two topics was the quicker."""
+    made = pilot(match_stamps=True)
+    nobody = Sighting(START, np.zeros((2, 0)))
+    made.crowd.see(nobody, START)
+    assert kind(give(made, pose(0))) == "no_goal"
+    made.start_episode("e", GOAL, 5.0)
+    made.crowd.see(nobody, START)
+    assert kind(give(made, pose(0))) == "order"
 
 
 @pytest.mark.parametrize("delay", [0.0, 0.06])

@@ -135,7 +135,8 @@ class Zones(NamedTuple):
 
         Below 0 they are outside.
         """
-        gap = np.minimum.reduce(np.minimum(self.to_low[:, None] + track, self.to_high[:, None] - track), axis=1)
+        gap = np.minimum(self.to_low[:, None] + track, self.to_high[:, None] - track)
+        gap = np.minimum(gap[:, 0], gap[:, 1])
         deep, touch = self.wall_level - gap * self.per_fade, 1.0 - gap * np.float32(1.0 / self.wall_contact)
         if self.places.shape[2]:
             square = track[:, :, None] - self.places[:, :, :, None]
@@ -153,12 +154,14 @@ def _places(obstacles: Obstacles, origin: Any, h: Any, low: Any, high: Any, wall
     start = (np.array([obstacles.x, obstacles.y]) - origin[:, None]).astype(np.float32)
     places = start + (_LOOK_TIMES * h)[:, None, None] * speed
     if walled and len(obstacles.x):
-        for wall, sign in ((low[:, None] + obstacles.radius, 1.0), (high[:, None] - obstacles.radius, -1.0)):
-            edge = (wall - origin[:, None]).astype(np.float32)
-            places -= edge
-            np.abs(places, out=places)
-            places *= sign
-            places += edge
+        edge = (low[:, None] + obstacles.radius - origin[:, None]).astype(np.float32)
+        places -= edge
+        np.abs(places, out=places)
+        places += edge
+        edge = (high[:, None] - obstacles.radius - origin[:, None]).astype(np.float32)
+        np.subtract(edge, places, out=places)
+        np.abs(places, out=places)
+        np.subtract(edge, places, out=places)
     return places
 
 

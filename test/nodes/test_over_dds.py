@@ -228,14 +228,18 @@ def test_pictures_of_the_field_come_while_somebody_looks(stack: Stack, guidance:
 
 
 def test_lockstep_episodes_end_as_in_the_batch_and_the_same_again(stack: Stack) -> None:
-    """Simulator, guidance and judge as processes; the batch is the same world without messages."""
+    """Simulator, guidance and judge as processes; the batch is the same world without messages.
+
+    With the published field: the default one chooses between courses, so that the last digit of a quaternion may
+    change a time by some hundredths of a second.
+    """
     layouts = draw_many(YARD, "empty", 4, seed=11)
-    batch = simulate(YARD, "empty", layouts, [DEFAULTS])
+    batch = simulate(YARD, "empty", layouts, [DEFAULTS], model="published")
     heard = stack.hear(String, "episode/outcome", RELIABLE)
     results: list[Outcome] = []
     with (
         NodeProcess("simulator_node", files=[LOCKSTEP]),
-        NodeProcess("guidance_node", files=[LOCKSTEP]),
+        NodeProcess("guidance_node", ["field.model:=published"], files=[LOCKSTEP]),
         NodeProcess("judge_node", files=[LOCKSTEP]),
     ):
         for number in range(2 * len(layouts)):
