@@ -17,9 +17,9 @@ LAYERS = (
     {"yard", "params_file", "resources", "arguments"},
     {"drive", "pending", "tracking"},
     {"field"},
-    {"guide", "crowd"},
+    {"guide", "crowd", "incoming"},
     {"world"},
-    {"pilot"},
+    {"pilot", "judging"},
     {"tuning"},
     {"prepare"},
     {"bags"},
@@ -33,8 +33,8 @@ ROS = re.compile(r"rclpy|rclcpp|rcl_|ament_|launch|rosidl|rosgraph|tf2|unique_id
 
 # Pure code gets time, randomness and files from its caller.
 PURE = {
-    "errors", "model", "parameters", "drive", "pending", "tracking", "field", "guide", "crowd", "pilot", "world",
-    "tuning",
+    "errors", "model", "parameters", "drive", "pending", "tracking", "field", "guide", "crowd", "incoming", "pilot",
+    "judging", "world", "tuning",
 }  # fmt: skip
 PURE_BUT = {
     "tuning/ledger.py": "writes the session's record",

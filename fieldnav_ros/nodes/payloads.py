@@ -14,12 +14,11 @@ from typing import Annotated, Any, Literal, TypeVar
 from pydantic import ConfigDict, Field, TypeAdapter, ValidationError, model_validator
 
 from fieldnav_ros.errors import InputError, WorkError
+from fieldnav_ros.incoming import LARGEST_COORDINATE, LARGEST_SPEED
 from fieldnav_ros.model import Frozen, Layout, Outcome, OutcomeKind
 from fieldnav_ros.yard import Arrival
 
 LARGEST_PAYLOAD = 64 * 1024
-LARGEST_COORDINATE = 1e4
-LARGEST_SPEED = 100.0
 
 Name = Annotated[str, Field(pattern=r"^[A-Za-z0-9][A-Za-z0-9._-]{0,79}$", description="letters, digits, . _ -")]
 FrameName = Annotated[str, Field(min_length=1, max_length=80)]
