@@ -23,6 +23,13 @@ MODELS: tuple[str, ...] = get_args(Model)
 DEFAULT_MODEL: Model = "foresight"
 PROBE = 0.01
 """Step in m by which the bend of the published field along the robot's heading is measured."""
+STEADY = 0.3
+"""Largest share of the heading error, and of the way to the goal, that one command may take away before the next.
+
+Gains that suit a hundred poses a second would otherwise make the robot swing about its course at thirty.
+"""
+SHORTEST = 1e-3
+"""Time in s that commands are at least taken to be apart."""
 FARTHEST = 1e6
 """Places and speeds beyond this (m, m/s) are taken as this, so that squares of finite input stay finite."""
 
@@ -113,7 +120,7 @@ def guide(
             )
         robots = Robots(x, y, yaw, memory.left, memory.right, _apart(x, y, goal))
         course, side = guidance_course(robots, goal, obstacles, numbers, robot, floor, habit)
-        heading, v, w = _follow(course, robots, numbers, robot)
+        heading, v, w = _follow(course, robots, numbers, robot, dt)
         way = np.where(course.pace < 0.0, -1.0, 1.0)
         habit = Habit(side, way * np.cos(heading), way * np.sin(heading), habit.waited)
     left, right = limit_wheels(v, w, robot)
@@ -133,9 +140,13 @@ def _apart(x: Any, y: Any, goal: Goal) -> Any:
     return np.sqrt(dx * dx + dy * dy)
 
 
-def _follow(course: Course, robots: Robots, numbers: Numbers, robot: Robot) -> tuple[Any, Any, Any]:
+def _follow(course: Course, robots: Robots, numbers: Numbers, robot: Robot, dt: Any) -> tuple[Any, Any, Any]:
     error = wrap(course.facing - robots.yaw)
     v, w = DriveLaw(course.bend, course.distance, numbers, robot, EASE)(error)
+    most = STEADY / np.maximum(dt, SHORTEST)
+    v = np.minimum(v, most * course.distance)
+    turn = most * np.abs(error) + np.abs(course.bend) * v
+    w = np.minimum(np.maximum(w, -turn), turn)
     return course.facing, v * course.pace, w
 
 

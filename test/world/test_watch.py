@@ -55,7 +55,7 @@ def test_a_session_and_the_batch_agree_on_every_episode(grade: str) -> None:
 
     Moving carts are left out: their velocities are given in the batch and tracked in a session.
     """
-    layouts = draw_many(YARD, grade, 12, seed=7)
+    layouts = draw_many(YARD, grade, 6, seed=7)
     batch = simulate(YARD, grade, layouts, [DEFAULTS])
     for column, layout in enumerate(layouts):
         outcome, expected = run_as_nodes_do(YARD, layout, YARD.grade(grade).time_limit), batch.outcome(0, column)
