@@ -42,6 +42,7 @@ EXTRAS["test"] = [
     *EXTRAS["pit"],
     *EXTRAS["cluster"],
     "pytest>=8",
+    "pytest-xdist>=3.5",
     "hypothesis",
     "jsonschema",
     "mcap",

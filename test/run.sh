@@ -10,7 +10,7 @@ cd "$source_dir"
 
 # A ROS installation brings pytest plugins of its own, which not every pytest can load.
 if [ -n "${ROS_DISTRO:-}" ]; then
-    export PYTEST_DISABLE_PLUGIN_AUTOLOAD=1 PYTEST_ADDOPTS="${PYTEST_ADDOPTS:-} -p _hypothesis_pytestplugin"
+    export PYTEST_DISABLE_PLUGIN_AUTOLOAD=1 PYTEST_ADDOPTS="${PYTEST_ADDOPTS:-} -p _hypothesis_pytestplugin -p xdist.plugin"
 fi
 
 result=0
@@ -23,5 +23,6 @@ else
     say "types are not checked here: that takes numpy 2.4 or later"
 fi
 [ "$result" -eq 0 ] || say "ruff or mypy found faults (above); running the tests all the same"
-pytest "$@" || result=$?
+# Two processes: half of the time goes by waiting for nodes to find each other. Each has a ROS domain of its own.
+pytest --numprocesses "${FIELDNAV_TEST_PROCESSES:-2}" --dist loadfile "$@" || result=$?
 exit "$result"

@@ -40,7 +40,8 @@ case "$*" in
 esac
 """
 # What the machine that runs the tests has set must not decide what they see.
-UNSET = ("ROS_DISTRO", "AMENT_PREFIX_PATH", "PYTHONPATH", "PIP_SAYS")
+PYTEST = "pytest --numprocesses 2 --dist loadfile"
+UNSET = ("ROS_DISTRO", "AMENT_PREFIX_PATH", "PYTHONPATH", "PIP_SAYS", "FIELDNAV_TEST_PROCESSES")
 
 
 class Clone:
@@ -196,13 +197,13 @@ def test_a_failed_installation_is_tried_again(clone: Clone) -> None:
 def test_the_checks_run_in_order_and_arguments_go_to_pytest(clone: Clone) -> None:
     result = clone.run("test/run.sh", "-k", "some thing")
     assert result.returncode == 0, result.stderr
-    assert result.stdout.splitlines() == ["ruff check .", "mypy ", "pytest -k some thing"]
+    assert result.stdout.splitlines() == ["ruff check .", "mypy ", f"{PYTEST} -k some thing"]
 
 
 def test_types_are_left_out_where_numpy_is_older_than_the_annotations(clone: Clone) -> None:
     result = clone.run("test/run.sh", OLD_NUMPY="1")
     assert result.returncode == 0
-    assert result.stdout.splitlines() == ["ruff check .", "pytest "]
+    assert result.stdout.splitlines() == ["ruff check .", f"{PYTEST} "]
     assert "types are not checked here" in result.stderr
 
 
@@ -213,7 +214,7 @@ def test_a_check_that_fails_fails_the_whole_and_the_tests_run_all_the_same(
     """Pytest's 5 says that no test ran: that is a failure too."""
     result = clone.run("test/run.sh", **variables)
     assert result.returncode == code
-    assert result.stdout.splitlines()[-1] == "pytest "
+    assert result.stdout.splitlines()[-1] == f"{PYTEST} "
 
 
 def test_the_libraries_of_another_environment_are_left_behind(clone: Clone) -> None:
