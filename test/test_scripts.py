@@ -203,7 +203,7 @@ def test_the_checks_run_in_order_and_arguments_go_to_pytest(clone: Clone) -> Non
 def test_types_are_left_out_where_numpy_is_older_than_the_annotations(clone: Clone) -> None:
     result = clone.run("test/run.sh", OLD_NUMPY="1")
     assert result.returncode == 0
-    assert result.stdout.splitlines() == ["ruff check .", f"{PYTEST} "]
+    assert result.stdout.splitlines() == ["ruff check .", PYTEST]
     assert "types are not checked here" in result.stderr
 
 
@@ -214,7 +214,7 @@ def test_a_check_that_fails_fails_the_whole_and_the_tests_run_all_the_same(
     """Pytest's 5 says that no test ran: that is a failure too."""
     result = clone.run("test/run.sh", **variables)
     assert result.returncode == code
-    assert result.stdout.splitlines()[-1] == f"{PYTEST} "
+    assert result.stdout.splitlines()[-1] == PYTEST
 
 
 def test_the_libraries_of_another_environment_are_left_behind(clone: Clone) -> None:
