@@ -15,7 +15,7 @@ from pydantic import ConfigDict, Field, TypeAdapter, ValidationError, model_vali
 
 from fieldnav_ros.errors import InputError, WorkError
 from fieldnav_ros.incoming import LARGEST_COORDINATE, LARGEST_SPEED
-from fieldnav_ros.model import Frozen, Layout, Outcome, OutcomeKind
+from fieldnav_ros.model import Frozen, Layout, Outcome, OutcomeKind, Pose
 from fieldnav_ros.yard import Arrival
 
 LARGEST_PAYLOAD = 64 * 1024
@@ -34,10 +34,12 @@ class Payload(Frozen):
     schema_version: Literal[1] = Field(default=1, alias="schema", description="version of this payload")
 
 
-class RunEpisode(Payload):
-    """``episode/request``: put everything at the layout's start and run one episode to its goal."""
+Source = Literal["judge", "referee", "operator"]
 
-    action: Literal["run"] = "run"
+
+class EpisodeRequested(Payload):
+    """What every request that is judged holds; ``RunEpisode`` and ``ObserveEpisode`` say what moves the robot."""
+
     episode: Name = Field(description="identifies the episode; the outcome repeats it")
     set: Name = Field(description="id of the parameter set in service")
     layout: Layout
@@ -46,15 +48,45 @@ class RunEpisode(Payload):
     arrival: Arrival = Field(default=Arrival(), description="how close counts as arrived (m, rad)")
     grade: str = Field(default="", max_length=80, description="the yard's grade, for the record")
     source: str = Field(default="", max_length=80, description="who asks, for the record")
+    outcomes: Source | None = Field(default=None, description="whose outcome ends the episode; null: anybody's")
 
     @model_validator(mode="after")
-    def _within_reason(self) -> RunEpisode:
+    def _within_reason(self) -> EpisodeRequested:
         layout = self.layout
         for name, item in (("start", layout.start), ("goal", layout.goal), *_named(layout)):
-            for key, limit in _BOUNDS.items():
-                value = getattr(item, key, 0.0)
-                if abs(value) > limit:
-                    raise ValueError(f"layout.{name}.{key} is {value:g}, must be from {-limit:g} to {limit:g}")
+            _check_bounds(f"layout.{name}", item)
+        return self
+
+    def ended_by(self, outcome: EpisodeOutcome) -> bool:
+        """Tell whether an outcome ends this episode: it is about it, and from whom the request names."""
+        return outcome.episode == self.episode and self.outcomes in (None, outcome.source)
+
+
+class RunEpisode(EpisodeRequested):
+    """``episode/request``: put everything at the layout's start and run one episode to its goal."""
+
+    action: Literal["run"] = "run"
+
+
+class ObserveEpisode(EpisodeRequested):
+    """``episode/request``: judge and record the way to a goal that somebody else gave; guidance changes nothing."""
+
+    action: Literal["observe"] = "observe"
+
+
+class DriveTo(Payload):
+    """``episode/request``: drive to the next start and stand there; nobody judges it. A word to stop ends it."""
+
+    action: Literal["drive"] = "drive"
+    episode: Name = Field(description="names the drive")
+    goal: Pose
+    frame: FrameName = Field(description="frame of the goal")
+    time_limit: float = Field(gt=0, le=600, description="s after which guidance gives the drive up")
+    source: str = Field(default="", max_length=80, description="who asks, for the record")
+
+    @model_validator(mode="after")
+    def _within_reason(self) -> DriveTo:
+        _check_bounds("goal", self.goal)
         return self
 
 
@@ -66,7 +98,8 @@ class StopEpisode(Payload):
     source: str = Field(default="", max_length=80, description="who asks, for the record")
 
 
-EpisodeRequest = Annotated[RunEpisode | StopEpisode, Field(discriminator="action")]
+Request = RunEpisode | ObserveEpisode | DriveTo | StopEpisode
+EpisodeRequest = Annotated[Request, Field(discriminator="action")]
 
 
 class EpisodeOutcome(Payload):
@@ -77,7 +110,7 @@ class EpisodeOutcome(Payload):
     time: Seconds = Field(description="s from the start of the episode to its end")
     clearance: float | None = Field(default=None, description="least gap to an obstacle or wall in m; null: unknown")
     stamp: float = Field(description="time of the end in s, on the clock of the poses' stamps")
-    source: Literal["judge", "referee", "operator"]
+    source: Source
     detail: Sentence = ""
 
     def outcome(self) -> Outcome:
@@ -85,8 +118,17 @@ class EpisodeOutcome(Payload):
         return Outcome(kind=self.kind, time=self.time, clearance=self.clearance)
 
 
+class PastEpisode(Frozen):
+    """One of the last episodes, without its set: who may take episodes back must not know whose they were."""
+
+    episode: Count
+    kind: OutcomeKind
+    time: Seconds = Field(description="s from the start of the episode to its end")
+    source: str = Field(max_length=2000)
+
+
 class TunerStatus(Payload):
-    """``tuner/status``: where the session stands, for the operator's terminal."""
+    """``tuner/status``: where the session stands, for the operator's terminal. Optional where the tuner cannot say."""
 
     state: str = Field(min_length=1, max_length=40, description="what the tuner does now, one word")
     phase: str = Field(max_length=40, description="part of the session")
@@ -101,13 +143,29 @@ class TunerStatus(Payload):
     threshold: float | None = Field(default=None, description="evidence needed to accept it")
     message: Sentence = ""
     warnings: tuple[Sentence, ...] = Field(default=(), max_length=20)
+    mode: Literal["tune", "observe"] = "tune"
+    todo: Sentence = Field(default="", description="what whoever stands beside the floor should do now")
+    floor_time: Seconds | None = Field(default=None, description="s of floor time that the session may use")
+    search_left: Count | None = Field(default=None, description="episodes planned for the search")
+    verdict_left: Count | None = Field(default=None, description="episodes kept for the verdict")
+    mean_episode: Seconds | None = Field(default=None, description="s that an episode takes, as learnt so far")
+    mean_reset: Seconds | None = Field(default=None, description="s that a reset takes, as learnt so far")
+    pairs: Count | None = Field(default=None, description="pairs that champion and challenger have run")
+    verdict: Sentence = Field(default="", description="the last verdict, in words")
+    in_service: Name | None = Field(default=None, description="set that guidance holds, read back; null: unconfirmed")
+    episode: Name | None = Field(default=None, description="episode that runs, as in its request")
+    episode_time: Seconds | None = Field(default=None, description="s since it was asked for")
+    outcomes: Source = Field(default="judge", description="whose outcomes count")
+    returns: Literal["simulator", "drive", "operator"] = "simulator"
+    pose_age: Seconds | None = Field(default=None, description="s since the newest pose; null: not watched or none yet")
+    last: tuple[PastEpisode, ...] = Field(default=(), max_length=10, description="last episodes, newest first")
 
 
 _BOUNDS = {
     "x": LARGEST_COORDINATE, "y": LARGEST_COORDINATE, "yaw": LARGEST_COORDINATE,
     "vx": LARGEST_SPEED, "vy": LARGEST_SPEED, "radius": LARGEST_COORDINATE,
 }  # fmt: skip
-_REQUEST: TypeAdapter[RunEpisode | StopEpisode] = TypeAdapter(EpisodeRequest)
+_REQUEST: TypeAdapter[Request] = TypeAdapter(EpisodeRequest)
 _OUTCOME = TypeAdapter(EpisodeOutcome)
 _STATUS = TypeAdapter(TunerStatus)
 _SCHEMAS: dict[str, TypeAdapter[Any]] = {
@@ -116,7 +174,7 @@ _SCHEMAS: dict[str, TypeAdapter[Any]] = {
 Decoded = TypeVar("Decoded")
 
 
-def encode(payload: RunEpisode | StopEpisode | EpisodeOutcome | TunerStatus) -> str:
+def encode(payload: Request | EpisodeOutcome | TunerStatus) -> str:
     """Return the payload as JSON; WorkError where it is larger than a receiver accepts."""
     text = payload.model_dump_json(by_alias=True)
     if len(text.encode()) > LARGEST_PAYLOAD:
@@ -124,7 +182,7 @@ def encode(payload: RunEpisode | StopEpisode | EpisodeOutcome | TunerStatus) -> 
     return text
 
 
-def decode_request(text: str) -> RunEpisode | StopEpisode:
+def decode_request(text: str) -> Request:
     """Return the request in ``text``; InputError in one sentence where it is none."""
     return _decode(_REQUEST, text, "episode/request")
 
@@ -166,6 +224,13 @@ def write_schemas(folder: Path) -> None:
         (folder / f"{name}.json").write_text(json.dumps(schema, indent=2) + "\n", encoding="utf-8")
 
 
+def _check_bounds(name: str, item: Any) -> None:
+    for key, limit in _BOUNDS.items():
+        value = getattr(item, key, 0.0)
+        if abs(value) > limit:
+            raise ValueError(f"{name}.{key} is {value:g}, must be from {-limit:g} to {limit:g}")
+
+
 def _named(layout: Layout) -> list[tuple[str, Any]]:
     return [(f"obstacles.{index}", obstacle) for index, obstacle in enumerate(layout.obstacles)]
 
@@ -181,7 +246,7 @@ def _decode(adapter: TypeAdapter[Decoded], text: str, source: str) -> Decoded:
         if found["type"] == "json_invalid":
             raise InputError(f"{source}: not readable as JSON: {found['ctx']['error']}") from error
         if found["type"].startswith("union_tag"):
-            raise InputError(f"{source}: action must be 'run' or 'stop'") from error
+            raise InputError(f"{source}: action must be 'run', 'observe', 'drive' or 'stop'") from error
         raise InputError.from_validation(error, source) from error
 
 

@@ -14,7 +14,15 @@ from jsonschema import Draft202012Validator, ValidationError
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.model import Layout, Obstacle, OutcomeKind, Pose
 from fieldnav_ros.nodes import payloads
-from fieldnav_ros.nodes.payloads import EpisodeOutcome, RunEpisode, StopEpisode, TunerStatus
+from fieldnav_ros.nodes.payloads import (
+    DriveTo,
+    EpisodeOutcome,
+    ObserveEpisode,
+    PastEpisode,
+    RunEpisode,
+    StopEpisode,
+    TunerStatus,
+)
 
 names = st.from_regex(r"\A[A-Za-z0-9][A-Za-z0-9._-]{0,79}\Z")
 metres = st.floats(-1e4, 1e4)
@@ -32,6 +40,11 @@ runs = st.builds(
     time_limit=st.floats(0.1, 600.0),
     grade=st.text(max_size=80),
 )
+observations = st.builds(
+    ObserveEpisode, episode=names, set=names, layout=layouts, frame=st.just("map"), time_limit=st.floats(0.1, 600.0),
+    outcomes=st.sampled_from(["judge", "referee", "operator"]) | st.none(),
+)  # fmt: skip
+drives = st.builds(DriveTo, episode=names, goal=poses, frame=st.just("map"), time_limit=st.floats(0.1, 600.0))
 stops = st.builds(StopEpisode, episode=names)
 outcomes = st.builds(
     EpisodeOutcome,
@@ -52,9 +65,18 @@ statuses = st.builds(
     floor_time_left=st.floats(-1e6, 1e6),
     champion=names,
     warnings=st.lists(st.text(max_size=100), max_size=20).map(tuple),
+    in_service=st.none() | names,
+    pose_age=st.none() | st.floats(0.0, 1e6),
+    last=st.lists(
+        st.builds(
+            PastEpisode, episode=st.integers(0, 10**6), kind=st.sampled_from(OutcomeKind), time=st.floats(0.0, 1e6),
+            source=st.text(max_size=100),
+        ),
+        max_size=10,
+    ).map(tuple),
 )
 KINDS: list[tuple[str, Any, Any]] = [
-    ("episode_request", runs | stops, payloads.decode_request),
+    ("episode_request", runs | observations | drives | stops, payloads.decode_request),
     ("episode_outcome", outcomes, payloads.decode_outcome),
     ("tuner_status", statuses, payloads.decode_status),
 ]
@@ -109,6 +131,8 @@ WRONG: list[tuple[str, dict[str, Any]]] = [
     ("a path as name", {**GOOD, "episode": "../../x"}),
     ("no name", {**GOOD, "episode": ""}),
     ("no layout", {**GOOD, "layout": None}),
+    ("a drive to nowhere", {"action": "drive", "episode": "e", "frame": "map", "time_limit": 5}),
+    ("outcomes of nobody", {**GOOD, "outcomes": "audience"}),
     ("a stop with a layout", {"action": "stop", "episode": "e", "layout": GOOD["layout"]}),
 ]
 
@@ -138,7 +162,31 @@ def test_any_other_text_is_one_sentence(text: str) -> None:
         assert len(str(caught.value)) < 300
 
 
+def test_a_drive_out_of_this_world_is_refused() -> None:
+    goal = Pose(x=2e4, y=0, yaw=0)
+    with pytest.raises(ValueError, match="goal.x is 20000"):
+        DriveTo(episode="e", goal=goal, frame="map", time_limit=5.0)
+
+
 @pytest.mark.parametrize("text", ["x" * 70_000, "é" * 40_000, "[" * 60_000, '{"a":' * 12_000, "\udc80"])
 def test_size_depth_and_broken_unicode_are_refused(text: str) -> None:
     with pytest.raises(InputError):
         payloads.decode_request(text)
+
+
+@pytest.mark.parametrize(
+    ("wanted", "episode", "source", "ends"),
+    [
+        (None, "e1", "judge", True),
+        (None, "e2", "judge", False),
+        ("operator", "e1", "operator", True),
+        ("operator", "e1", "judge", False),
+        ("referee", "e1", "operator", False),
+    ],
+)
+def test_an_episode_ends_by_the_report_of_whom_its_request_names(
+    wanted: Any, episode: str, source: Any, ends: bool
+) -> None:
+    request = RUN.model_copy(update={"outcomes": wanted})
+    outcome = EpisodeOutcome(episode=episode, kind=OutcomeKind.ARRIVED, time=1.0, stamp=0.0, source=source)
+    assert request.ended_by(outcome) is ends
