@@ -164,7 +164,7 @@ def test_any_other_text_is_one_sentence(text: str) -> None:
 
 def test_a_drive_out_of_this_world_is_refused() -> None:
     goal = Pose(x=2e4, y=0, yaw=0)
-    with pytest.raises(ValueError, match="goal.x is 20000"):
+    with pytest.raises(ValueError, match=r"goal\.x is 20000"):
         DriveTo(episode="e", goal=goal, frame="map", time_limit=5.0)
 
 
