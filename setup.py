@@ -10,7 +10,7 @@ from setuptools import find_packages, setup
 
 NAME = "fieldnav_ros"
 SHARE = f"share/{NAME}"
-NODES = ("guidance_node", "tuner_node", "simulator_node", "judge_node")
+NODES = ("guidance_node", "tuner_node", "simulator_node", "judge_node", "recorder_node")
 EXECUTABLES = {"fieldnav": f"{NAME}.cli:main", **{node: f"{NAME}.nodes.{node}:main" for node in NODES}}
 
 # ROS 2 as wheels, for machines without a ROS installation (x86-64, CPython 3.10 to 3.14). One distribution per
@@ -28,7 +28,7 @@ ROS_WHEELS = (
 EXTRAS = {
     "ros": [f"ros-jazzy-{wheel}" for wheel in ROS_WHEELS],
     "ros-kilted": [f"ros-kilted-{wheel}" for wheel in ROS_WHEELS],
-    "bags": ["rosbags"],
+    "bags": ["mcap>=1.5", "rosbags"],  # mcap 1.5 is the first that writes out a chunk when asked
     "report": ["matplotlib", "jinja2", "markupsafe"],
     "pit": ["rich"],
     "cluster": ["distributed"],
@@ -45,7 +45,6 @@ EXTRAS["test"] = [
     "pytest-xdist>=3.5",
     "hypothesis",
     "jsonschema",
-    "mcap",
     "mcap-ros2-support",
     # New releases of these two find new faults in unchanged code.
     "ruff>=0.17,<0.18",
