@@ -15,6 +15,7 @@ from fieldnav_ros.arguments import number
 from fieldnav_ros.errors import FieldnavError, InputError
 from fieldnav_ros.prepare import command as prepare
 from fieldnav_ros.report import command as report
+from fieldnav_ros.report import survey_command
 
 SAFETY = (
     "Robots can hurt: clear the floor, keep the hardware stop in hand. This software is no safety system; "
@@ -36,6 +37,12 @@ def _report(arguments: argparse.Namespace) -> Summary:
     return summary
 
 
+def _survey(arguments: argparse.Namespace) -> Summary:
+    lines, summary = survey_command.run(arguments)
+    print("\n".join(lines))
+    return summary
+
+
 def build_parser() -> argparse.ArgumentParser:
     """Return the parser of all verbs."""
     parser = _Parser(prog="fieldnav", description="Retune a robot's heading-field guidance.", epilog=SAFETY)
@@ -51,6 +58,7 @@ def build_parser() -> argparse.ArgumentParser:
         "--seed", type=number("--seed", 0, 2**31, int), default=1, help="seed of the session (default: %(default)s)"
     )
     prepare.add_arguments(_verb(verbs, "pretune", prepare.run, "tune in simulation; writes a prior for the site"))
+    survey_command.add_arguments(_verb(verbs, "survey", _survey, "the field as a picture, with its faults marked"))
     report.add_arguments(_verb(verbs, "report", _report, "one page with pictures from a session's ledger"))
     return parser
 

@@ -45,12 +45,17 @@ def write_parameters(path: Path, parameters: ParameterSet, about: str, model: st
 
 def write_text(path: Path, text: str) -> None:
     """Replace a file by ``text`` in one step that survives a crash; WorkError where that fails."""
+    write_bytes(path, text.encode("utf-8"))
+
+
+def write_bytes(path: Path, content: bytes) -> None:
+    """Replace a file by ``content`` as ``write_text`` does."""
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
         handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.")
         try:
-            with os.fdopen(handle, "w", encoding="utf-8") as file:
-                file.write(text)
+            with os.fdopen(handle, "wb") as file:
+                file.write(content)
                 file.flush()
                 os.fsync(file.fileno())
             os.chmod(name, 0o644)
@@ -68,18 +73,24 @@ def read_parameters(path: str | Path) -> ParameterSet:
     Raises InputError, one sentence, on anything that is not such a file, on a number out of its range and
     on an unknown name in the groups of the nine numbers. Parameters of other groups are not looked at.
     """
-    path = Path(path)
+    values = {name: value for name, value in _named(Path(path)) if name.split(".")[0] in GROUPS}
+    return ParameterSet.from_ros({name: values[name] for name in values if name not in NOT_NUMBERS}, str(path))
+
+
+def read_model(path: str | Path) -> object:
+    """Return what a ROS parameter file gives as ``field.model``, None where it gives none; errors as above."""
+    return dict(_named(Path(path))).get("field.model")
+
+
+def _named(path: Path) -> Iterator[tuple[str, object]]:
+    """Yield the full name and value of each parameter in a file, whatever its node."""
     content = read_yaml(path)
     if not isinstance(content, Mapping) or not content:
         raise InputError(f"{path}: holds {shown(content)}, must hold node names with ros__parameters")
-    values: dict[str, object] = {}
     for node, body in content.items():
         if not isinstance(body, Mapping) or not isinstance(body.get("ros__parameters"), Mapping):
             raise InputError(f"{path}: {shown(node)} has no ros__parameters")
-        for name, value in _flat(body["ros__parameters"], str(path)):
-            if name.split(".")[0] in GROUPS and name not in NOT_NUMBERS:
-                values[name] = value
-    return ParameterSet.from_ros(values, str(path))
+        yield from _flat(body["ros__parameters"], str(path))
 
 
 def _flat(tree: Mapping[Any, Any], source: str, prefix: str = "") -> Iterator[tuple[str, object]]:

@@ -19,7 +19,7 @@ LAYERS = (
     {"field"},
     {"guide", "crowd", "incoming"},
     {"world"},
-    {"pilot", "judging"},
+    {"pilot", "resets", "judging", "survey"},
     {"tuning"},
     {"prepare"},
     {"bags"},
@@ -34,7 +34,7 @@ ROS = re.compile(r"rclpy|rclcpp|rcl_|ament_|launch|rosidl|rosgraph|tf2|unique_id
 # Pure code gets time, randomness and files from its caller.
 PURE = {
     "errors", "model", "parameters", "drive", "pending", "tracking", "field", "guide", "crowd", "incoming", "pilot",
-    "judging", "world", "tuning",
+    "resets", "judging", "world", "survey", "tuning",
 }  # fmt: skip
 PURE_BUT = {
     "tuning/ledger.py": "writes the session's record",

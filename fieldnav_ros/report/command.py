@@ -56,7 +56,7 @@ def write_report(
     for module in ("matplotlib", "jinja2"):
         if find_spec(module) is None:
             raise WorkError(f"{module} is not installed; install fieldnav_ros with its extra 'report'")
-    _check_place(out)
+    check_place(out)
     from fieldnav_ros.report.page import render  # takes a second to import, which other verbs need not wait for
     from fieldnav_ros.report.record import read_record
 
@@ -65,7 +65,8 @@ def write_report(
     return record
 
 
-def _check_place(out: Path) -> None:
+def check_place(out: Path) -> None:
+    """InputError where a file cannot go there, or would go over a ledger."""
     if out.is_dir():
         raise InputError.of("--out", str(out), "a file, not a folder")
     if not out.parent.is_dir():

@@ -11,12 +11,11 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.patches import Circle, Rectangle
 
-from fieldnav_ros.field.avoidance import Obstacles
-from fieldnav_ros.guide import Memory, Senses, guide
 from fieldnav_ros.model import Layout, Obstacle, OutcomeKind, Pose
-from fieldnav_ros.parameters import FloatArray, ParameterSet, stack
+from fieldnav_ros.parameters import ParameterSet
 from fieldnav_ros.report.replay import FloorTrack
 from fieldnav_ros.report.style import AFTER, BEFORE, INK, LOOKS, SOFT, WORDS, key_above, new_figure, styled
+from fieldnav_ros.survey.scene import Scene, clear, grid, headings
 from fieldnav_ros.yard import Yard
 
 ARROWS = 26
@@ -38,8 +37,8 @@ def failures(yard: Yard | None, items: Sequence[Failure]) -> Figure:
     """Where failed episodes began and, where known, ended."""
     with styled():
         x, y = _extent(yard, [item.layout for item in items])
-        figure, axes = new_figure(_height(x, y) + 0.3)
-        _floor(axes, yard, x, y)
+        figure, axes = new_figure(floor_height(x, y) + 0.3)
+        draw_floor(axes, yard, x, y)
         known = [item for item in items if item.track is not None]
         for item in known:
             track = item.track
@@ -84,12 +83,12 @@ def field(
     others: Sequence[FloorTrack] = (),
     after: bool = False,
 ) -> Figure:
-    """Headings that the field gives a robot at rest all over the floor at the layout's start, and tracks over them."""
+    """Headings all over the floor at the layout's start, for a robot at rest that faces along them, and tracks."""
     with styled():
         x, y = _extent(yard, [layout])
-        figure, axes = new_figure(_height(x, y) + 0.3)
-        _floor(axes, yard, x, y)
-        _arrows(axes, yard, layout, parameters, model)
+        figure, axes = new_figure(floor_height(x, y) + 0.3)
+        draw_floor(axes, yard, x, y)
+        draw_arrows(axes, Scene(yard, parameters, model, layout.goal, layout.obstacles))
         colour, dashes = (AFTER, "-") if after else (BEFORE, (0, (5, 1.2)))
         for track in others:
             axes.plot(track.x, track.y, color=colour, linewidth=0.9, linestyle=dashes)
@@ -99,17 +98,22 @@ def field(
             axes.plot(main.x, main.y, color=colour, linewidth=2.6, linestyle=dashes, label="track")
             _end(axes, main, 7.0)
         for cart in layout.obstacles:
-            axes.add_patch(Circle((cart.x, cart.y), cart.radius, facecolor="#c9ced2", edgecolor=INK, linewidth=0.9))
-            axes.annotate(
-                "",
-                _ahead(cart, yard),
-                (cart.x, cart.y),
-                annotation_clip=False,
-                arrowprops={"arrowstyle": "->", "color": INK, "linewidth": 1.0, "shrinkA": 0, "shrinkB": 0},
-            )
-        _pose(axes, layout.start, yard.robot.radius, INK, "white")
-        _pose(axes, layout.goal, yard.robot.radius, INK, INK)
+            draw_cart(axes, yard, cart)
+        draw_pose(axes, layout.start, yard.robot.radius, INK, "white")
+        draw_pose(axes, layout.goal, yard.robot.radius, INK, INK)
     return figure
+
+
+def draw_cart(axes: Axes, yard: Yard, cart: Obstacle) -> None:
+    """Draw a cart as a disc and, where it moves, an arrow to where it heads."""
+    axes.add_patch(Circle((cart.x, cart.y), cart.radius, facecolor="#c9ced2", edgecolor=INK, linewidth=0.9))
+    axes.annotate(
+        "",
+        _ahead(cart, yard),
+        (cart.x, cart.y),
+        annotation_clip=False,
+        arrowprops={"arrowstyle": "->", "color": INK, "linewidth": 1.0, "shrinkA": 0, "shrinkB": 0},
+    )
 
 
 def _ahead(cart: Obstacle, yard: Yard) -> tuple[float, float]:
@@ -119,38 +123,14 @@ def _ahead(cart: Obstacle, yard: Yard) -> tuple[float, float]:
     return min(max(x, low_x), high_x), min(max(y, low_y), high_y)
 
 
-def headings(
-    yard: Yard, layout: Layout, parameters: ParameterSet, model: str
-) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """Return a grid of places that the robot can take (m) and the field's heading there (rad), each (N,)."""
-    (low_x, high_x), (low_y, high_y) = yard.floor.x, yard.floor.y
-    step = max(high_x - low_x, high_y - low_y) / ARROWS
-    across, up = (np.arange(low + step / 2, high, step) for low, high in ((low_x, high_x), (low_y, high_y)))
-    x, y = (part.ravel() for part in np.meshgrid(across, up))
-    free = np.ones(x.shape, dtype=bool)
-    for cart in layout.obstacles:
-        free &= np.hypot(x - cart.x, y - cart.y) > cart.radius
+def draw_arrows(axes: Axes, scene: Scene, arrows: int = ARROWS) -> None:
+    """Draw the headings of ``survey.scene.headings``, so many arrows along the longer side of the floor."""
+    floor = scene.yard.floor
+    side = max(_span(floor.x), _span(floor.y))
+    x, y = (part.ravel() for part in np.meshgrid(*grid(scene.yard, side / arrows)))
+    free = clear(scene, x, y)
     x, y = x[free], y[free]
-    ones, goal = np.ones_like(x), layout.goal
-    table = np.array([(item.x, item.y, item.vx, item.vy, item.radius) for item in layout.obstacles]).reshape(-1, 5)
-    carts = Obstacles(*(np.repeat(part[:, None], len(x), axis=1) for part in table.T))
-    # at rest and facing the goal: what the heading says of the place, not of how the robot came there
-    yaw = np.arctan2(goal.y - y, goal.x - x)
-    senses = Senses(x, y, yaw, goal.x * ones, goal.y * ones, goal.yaw * ones, carts)
-    advice = guide(
-        senses,
-        stack([parameters], len(x)),
-        yard.robot,
-        yard.floor,
-        Memory.start(len(x)),
-        1.0 / yard.plant.pose_rate,
-        model,
-    )
-    return x, y, advice.heading
-
-
-def _arrows(axes: Axes, yard: Yard, layout: Layout, parameters: ParameterSet, model: str) -> None:
-    x, y, heading = headings(yard, layout, parameters, model)
+    heading = headings(scene, x, y)
     axes.quiver(
         x,
         y,
@@ -161,8 +141,8 @@ def _arrows(axes: Axes, yard: Yard, layout: Layout, parameters: ParameterSet, mo
         units="xy",
         angles="xy",
         scale_units="xy",
-        scale=1.35 * ARROWS / max(_span(yard.floor.x), _span(yard.floor.y)),
-        width=0.0045 * max(_span(yard.floor.x), _span(yard.floor.y)) / 2.4,
+        scale=1.35 * arrows / side,
+        width=0.0045 * side / 2.4,
         headwidth=4.5,
         headlength=4.5,
         headaxislength=4.0,
@@ -183,7 +163,7 @@ def _end(axes: Axes, track: FloorTrack, size: float) -> None:
     )
 
 
-def _pose(axes: Axes, pose: Pose, radius: float, colour: str, fill: str) -> None:
+def draw_pose(axes: Axes, pose: Pose, radius: float, colour: str, fill: str) -> None:
     """Draw a robot's footprint as a disc with a nose."""
     axes.add_patch(Circle((pose.x, pose.y), radius, facecolor="white", edgecolor=colour, linewidth=1.2, zorder=3))
     ahead = (pose.x + 2.2 * radius * math.cos(pose.yaw), pose.y + 2.2 * radius * math.sin(pose.yaw))
@@ -217,11 +197,13 @@ def _extent(yard: Yard | None, layouts: Sequence[Layout]) -> tuple[tuple[float, 
     return (min(xs) - 0.2, max(xs) + 0.2), (min(ys) - 0.2, max(ys) + 0.2)
 
 
-def _height(x: tuple[float, float], y: tuple[float, float]) -> float:
+def floor_height(x: tuple[float, float], y: tuple[float, float]) -> float:
+    """Return the height (in) of a figure as wide as usual with a floor of these sides (m)."""
     return 0.5 + 4.2 * min(max(_span(y) / _span(x), 0.25), 1.6)
 
 
-def _floor(axes: Axes, yard: Yard | None, x: tuple[float, float], y: tuple[float, float]) -> None:
+def draw_floor(axes: Axes, yard: Yard | None, x: tuple[float, float], y: tuple[float, float]) -> None:
+    """Draw the edge of the floor, thick where it is a wall, and label the axes."""
     walled = yard is not None and yard.floor.walled
     axes.add_patch(
         Rectangle(

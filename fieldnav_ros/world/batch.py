@@ -145,6 +145,7 @@ class _Run:
         self.memory = Memory.start(rows, slots(command_delay, STEP * int(1.0 / self.poses_per_step + 1e-9)))
         self.advised = np.full(rows, -1.0 / self.poses_per_step)  # the step of the last pose that came
         self.wheels = np.zeros(rows), np.zeros(rows)  # what they have been told
+        self.asked = self.motion.yaw  # the heading of the field at the last pose, for those who watch
         self.near = self.carts.take(place)
         fastest = float(np.hypot(self.carts.vx, self.carts.vy).max(initial=0.0))
         self.moving = fastest > 0.0
@@ -188,6 +189,7 @@ class _Run:
             Senses(x, y, yaw, *self.goal, self.near), self.numbers, self.yard.robot, self.yard.floor,
             self.memory, STEP * (number - self.advised), self.model, self.command_delay,
         )  # fmt: skip
+        self.asked = advice.heading
         wheels = limit_wheels(advice.v, advice.w, self.yard.robot)
         lost = None if tapes is None else tapes.lost[number][self.place]
         if lost is None or not lost.any():
