@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import gc
 import signal
 import sys
 import time
@@ -35,6 +36,8 @@ LATCHED = QoSProfile(
 DEEP = QoSProfile(depth=2000, reliability=ReliabilityPolicy.RELIABLE)
 """For lockstep: simulator and guidance do not wait for the judge, whose queue must hold what it has not yet seen."""
 SENSOR = qos_profile_sensor_data
+NEWEST = QoSProfile(depth=1, reliability=ReliabilityPolicy.BEST_EFFORT)
+"""For guidance: where poses come faster than it can think, it takes the newest, not one that has waited."""
 QUIET_TIME = 5.0
 """Seconds for which the same warning is not logged again."""
 OK, WARN, ERROR = DiagnosticStatus.OK, DiagnosticStatus.WARN, DiagnosticStatus.ERROR
@@ -118,11 +121,11 @@ class FieldnavNode(Node):
         self._diagnostics.publish(message)
 
 
-def incoming_qos(settings: Mapping[str, Any]) -> QoSProfile:
-    """Return the QoS of pose and obstacles as ``match_stamps`` and ``reliable`` ask for it."""
+def incoming_qos(settings: Mapping[str, Any], otherwise: QoSProfile = SENSOR) -> QoSProfile:
+    """Return the QoS of pose and obstacles as ``match_stamps`` and ``reliable`` ask for it, ``otherwise`` by default."""
     if settings["match_stamps"]:
         return DEEP
-    return RELIABLE if settings["reliable"] else SENSOR
+    return RELIABLE if settings["reliable"] else otherwise
 
 
 def yard_of(path: str) -> Yard:
@@ -172,6 +175,8 @@ def _run(
     node = make(context)
     executor = _executor(context, events)
     executor.add_node(node)
+    gc.collect()
+    gc.freeze()  # all that is loaded stays: looking through it again and again would hold up commands by milliseconds
     try:
         while not stop:
             executor.spin_once(timeout_sec=0.1)

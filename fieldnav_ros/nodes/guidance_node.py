@@ -19,7 +19,18 @@ from fieldnav_ros.crowd import Crowd
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.model import Robot
 from fieldnav_ros.nodes import convert, markers
-from fieldnav_ros.nodes.base import ERROR, LATCHED, OK, RELIABLE, WARN, FieldnavNode, incoming_qos, run, yard_of
+from fieldnav_ros.nodes.base import (
+    ERROR,
+    LATCHED,
+    NEWEST,
+    OK,
+    RELIABLE,
+    WARN,
+    FieldnavNode,
+    incoming_qos,
+    run,
+    yard_of,
+)
 from fieldnav_ros.nodes.declare import tunable_settings
 from fieldnav_ros.nodes.guidance_settings import SETTINGS
 from fieldnav_ros.nodes.payloads import RunEpisode, decode_outcome, decode_request
@@ -86,7 +97,7 @@ class GuidanceNode(FieldnavNode):
 
     def _open_topics(self) -> None:
         given = self.settings
-        incoming = incoming_qos(given)
+        incoming = incoming_qos(given, NEWEST)
         self._heading = self.create_publisher(PoseStamped, "heading", RELIABLE)
         command = TwistStamped if given["stamped_cmd"] else Twist
         self._command = self.create_publisher(command, "cmd_vel", RELIABLE) if given["publish_cmd"] else None
