@@ -11,8 +11,9 @@ from typing import Any
 from geometry_msgs.msg import PoseArray
 from std_msgs.msg import String
 
-from fieldnav_ros.crowd import NANO, Crowd, Pairing, Reading, Sighting
+from fieldnav_ros.crowd import NANO
 from fieldnav_ros.errors import InputError
+from fieldnav_ros.judging import Judging, Patience
 from fieldnav_ros.nodes.base import (
     ERROR,
     LATCHED,
@@ -30,9 +31,8 @@ from fieldnav_ros.nodes.base import (
 from fieldnav_ros.nodes.convert import POSE_TYPES, reading_from, sighting_from
 from fieldnav_ros.nodes.declare import Setting
 from fieldnav_ros.nodes.payloads import EpisodeOutcome, RunEpisode, decode_outcome, decode_request, encode
-from fieldnav_ros.pilot import LOCKSTEP_PAUSE
 from fieldnav_ros.tracking import Rules as TrackingRules
-from fieldnav_ros.world.watch import START_SLACK, EpisodeWatch, Rules, Ruling
+from fieldnav_ros.world.watch import START_SLACK, Ruling
 
 SETTINGS: tuple[Setting, ...] = (
     YARD,
@@ -61,7 +61,7 @@ EARLY = 4000
 
 
 class JudgeNode(FieldnavNode):
-    """Wires topics to an ``EpisodeWatch`` and publishes its ruling once."""
+    """Wires topics to a ``Judging`` and publishes its ruling once."""
 
     def __init__(self, **options: Any) -> None:
         super().__init__("judge_node", SETTINGS, **options)
@@ -69,19 +69,17 @@ class JudgeNode(FieldnavNode):
         self._yard = yard_of(given["yard"])
         self._frame: str = given["frame"] or self._yard.frame
         self._by_arrival = given["pose_age_from"] == "arrival" and not given["match_stamps"]
-        self._crowd = Crowd(
+        self._judging = Judging(
+            self._yard,
             TrackingRules(
                 fastest=given["obstacle_speed"], patience=given["obstacle_timeout"], alpha=given["obstacle_trust"]
             ),
             given["obstacle_radius"] or self._yard.cart_radius,
+            Patience.model_validate({name: given[name] for name in Patience.model_fields}),
         )
         self._episode: RunEpisode | None = None
-        self._watch: EpisodeWatch | None = None
         self._early: deque[Any] = deque(maxlen=EARLY)
         self._ended = ""
-        self._pairing = Pairing()
-        self._last_stamp = 0
-        self._heard = self._asked = 0.0
         incoming = incoming_qos(given)
         # the request first: of messages that wait together, the executor takes them in this order
         self.create_subscription(String, "episode/request", self._on_request, LATCHED)
@@ -110,28 +108,14 @@ class JudgeNode(FieldnavNode):
             self._begin(request)
 
     def _begin(self, request: RunEpisode) -> None:
-        self._crowd.forget()
-        self._pairing = Pairing()
         self._episode = request
-        self._watch = self._new_watch(request)
-        self._last_stamp = 0
-        self._heard = self._asked = time.monotonic()
+        self._judging.begin(request.layout, request.arrival, request.time_limit, time.monotonic())
         self.state(f"judging episode {request.episode}")
         if request.frame != self._frame:
-            self._rule(self._watch.give_up(f"frame of the request is {request.frame!r}, must be {self._frame!r}"))
+            self._rule(self._judging.give_up(f"frame of the request is {request.frame!r}, must be {self._frame!r}"))
         for early in list(self._early):
             (self._on_obstacles if isinstance(early, PoseArray) else self._on_pose)(early)
         self._early.clear()
-
-    def _new_watch(self, request: RunEpisode) -> EpisodeWatch:
-        rules = Rules(
-            robot=self._yard.robot,
-            floor=self._yard.floor,
-            arrival=request.arrival,
-            time_limit=request.time_limit,
-            start_slack=self.settings["start_slack"],
-        )
-        return EpisodeWatch(request.layout, rules, self._crowd)
 
     def _on_outcome(self, message: String) -> None:
         outcome = self.decoded(decode_outcome, message)
@@ -139,7 +123,7 @@ class JudgeNode(FieldnavNode):
             self._drop(f"ended by the {outcome.source}: {outcome.kind.value}")
 
     def _on_pose(self, message: Any) -> None:
-        if self._watch is None:
+        if not self._judging.running:
             self._keep(message)
             return
         try:
@@ -147,18 +131,10 @@ class JudgeNode(FieldnavNode):
         except InputError as error:
             self.warn("bad_poses", f"ignored: {error}")
             return
-        self._heard = time.monotonic()
-        if self.settings["match_stamps"]:
-            self._pair(reading)
-        else:
-            self._look(reading)
+        self._rule(self._judging.pose(reading, self._moment(reading.stamp), time.monotonic()))
 
-    def _pair(self, item: Reading | Sighting) -> None:
-        pair = self._pairing.put(item)
-        if pair is not None:
-            reading, sighting = pair
-            self._crowd.see(sighting, sighting.stamp)
-            self._look(reading)
+    def _moment(self, stamp: int) -> int:
+        return time.monotonic_ns() if self._by_arrival else stamp
 
     def _keep(self, message: Any) -> None:
         """Keep what comes before the request: in lockstep an episode's first poses may overtake it."""
@@ -166,7 +142,7 @@ class JudgeNode(FieldnavNode):
             self._early.append(message)
 
     def _on_obstacles(self, message: PoseArray) -> None:
-        if self._watch is None:
+        if not self._judging.running:
             self._keep(message)
             return
         try:
@@ -174,41 +150,23 @@ class JudgeNode(FieldnavNode):
         except InputError as error:
             self.warn("bad_obstacles", f"ignored: {error}")
             return
-        if self.settings["match_stamps"]:
-            self._pair(sighting)
-        else:
-            self._crowd.see(sighting, time.monotonic_ns() if self._by_arrival else sighting.stamp)
-
-    def _look(self, reading: Reading) -> None:
-        if self._watch is not None and self._episode is not None:
-            if self.settings["match_stamps"] and reading.stamp - self._last_stamp > LOCKSTEP_PAUSE * NANO:
-                self._watch = self._new_watch(self._episode)  # what came before belongs to the episode before
-            self._last_stamp = reading.stamp
-            moment = time.monotonic_ns() if self._by_arrival else reading.stamp
-            ruling = self._watch.look_at(reading, moment)
-            if ruling is not None:
-                self._rule(ruling)
+        self._rule(self._judging.sighting(sighting, self._moment(sighting.stamp)))
 
     def _look_at_clock(self) -> None:
-        if self._watch is None or self._episode is None:
+        if self._episode is None:
             return
         now = time.monotonic()
-        if not self._watch.begun and now - self._asked > self.settings["start_timeout"]:
-            start = self._episode.layout.start
-            why = f"no pose near the start ({start.x:.2f}, {start.y:.2f}) for {self.settings['start_timeout']:g} s"
-            self._rule(self._watch.give_up(why))
-            return
-        silent = now - self._heard
-        if self._watch.begun and silent > self.settings["silence_limit"]:
-            self._rule(self._watch.give_up(f"no pose for {silent:.1f} s"))
-        elif silent > self.settings["silence_warning"]:
-            sentence = f"no pose for {silent:.1f} s in episode {self._episode.episode}"
+        name = self._episode.episode
+        self._rule(self._judging.clock(now))
+        silent = self._judging.silence(now)
+        if self._judging.running and silent > self.settings["silence_warning"]:
+            sentence = f"no pose for {silent:.1f} s in episode {name}"
             self.state(sentence, WARN)
             self.warn("silences", sentence)
 
-    def _rule(self, ruling: Ruling) -> None:
+    def _rule(self, ruling: Ruling | None) -> None:
         """Publish the ruling and forget the episode, in the other order: our own outcome comes back to us."""
-        if self._episode is None:
+        if self._episode is None or ruling is None:
             return
         outcome = ruling.outcome
         payload = EpisodeOutcome(
@@ -231,7 +189,8 @@ class JudgeNode(FieldnavNode):
             self._ended = self._episode.episode
             self.counts["episodes"] += 1
             self.state(f"episode {self._ended}: {how}", OK)
-        self._episode = self._watch = None
+        self._episode = None
+        self._judging.drop()
         self._early.clear()
 
 

@@ -65,6 +65,11 @@ class EpisodeWatch:
         """Whether a pose near the start has been seen."""
         return self._start is not None
 
+    @property
+    def start(self) -> int | None:
+        """Stamp (ns) of that pose."""
+        return self._start
+
     def look_at(self, reading: Reading, moment: int) -> Ruling | None:
         """Return the ruling if the episode has ended with this pose; ``moment`` (ns) as for the crowd."""
         if self._start is None or self._last is None:
