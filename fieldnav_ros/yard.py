@@ -13,7 +13,7 @@ from yaml.composer import ComposerError
 from yaml.constructor import ConstructorError
 
 from fieldnav_ros.errors import InputError, clipped, shown
-from fieldnav_ros.model import Frozen, Number, Positive, Robot
+from fieldnav_ros.model import Frozen, Number, Pose, Positive, Robot
 
 LARGEST_FILE = 1 << 16
 """Most bytes of a file that are read: twenty times what a yard takes, and read in seconds at worst."""
@@ -48,6 +48,15 @@ class Region(Frozen):
     x: Range
     y: Range
     yaw: Range = FULL_TURN
+
+
+class Mark(Frozen):
+    """A start marked on the floor, for robots that are placed by hand (m, rad)."""
+
+    name: str = Field(pattern=r"^[A-Za-z0-9][A-Za-z0-9_-]{0,19}$", description="as written on the floor")
+    x: Coordinate
+    y: Coordinate
+    yaw: Number
 
 
 class Arrival(Frozen):
@@ -110,6 +119,7 @@ class Yard(Frozen):
     cart_radius: Positive = 0.06
     start: Region
     goal: Region
+    marks: tuple[Mark, ...] = Field(default=(), max_length=50, description="starts marked on the floor")
     spacing: NonNegative = Field(
         default=0.12, description="least gap at the start between a cart and the robot, its goal or another cart"
     )
@@ -132,6 +142,28 @@ class Yard(Frozen):
                         f" to keep the robot (radius {self.robot.radius:g} m) out of the walls"
                     )
         return self
+
+    @model_validator(mode="after")
+    def _marks_clear_of_walls(self) -> Yard:
+        margin = self.robot.radius if self.floor.walled else 0.0
+        for mark in self.marks:
+            for axis in ("x", "y"):
+                low, high = getattr(self.floor, axis)
+                if not low + margin - ROUNDING <= getattr(mark, axis) <= high - margin + ROUNDING:
+                    raise ValueError(
+                        f"{axis} of mark {mark.name} is {getattr(mark, axis):g}, must be from {low + margin:g} to"
+                        f" {high - margin:g} for the robot (radius {self.robot.radius:g} m) to stand there"
+                    )
+        names = [mark.name for mark in self.marks]
+        for name in names:
+            if names.count(name) > 1:
+                raise ValueError(f"mark {name} is there {names.count(name)} times, must be there once")
+        return self
+
+    def mark_at(self, pose: Pose) -> str | None:
+        """Return the name of the mark at exactly this pose; None where there is none."""
+        here = (pose.x, pose.y, pose.yaw)
+        return next((mark.name for mark in self.marks if (mark.x, mark.y, mark.yaw) == here), None)
 
     @model_validator(mode="after")
     def _carts_fit(self) -> Yard:

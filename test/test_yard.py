@@ -160,6 +160,10 @@ def test_unknown_grade_names_those_there_are() -> None:
 # bad values
 
 
+def mark(**changes: Any) -> dict[str, Any]:
+    return {"name": "A", "x": 0.5, "y": 0.8, "yaw": 0.0, **changes}
+
+
 @pytest.mark.parametrize(
     ("key", "value", "says"),
     [
@@ -174,6 +178,10 @@ def test_unknown_grade_names_those_there_are() -> None:
         ("floor.walled", 1, "floor.walled is 1, must be a valid boolean"),
         ("start.x", [0.05, 0.8], "start.x is [0.05, 0.8], must lie from 0.06 to 2.34"),
         ("goal.y", [0.25, 1.55], "goal.y is [0.25, 1.55], must lie from 0.06 to 1.54"),
+        ("marks", [mark(x=0.05)], "x of mark A is 0.05, must be from 0.06 to 2.34"),
+        ("marks", [mark(y=1.55)], "y of mark A is 1.55, must be from 0.06 to 1.54"),
+        ("marks", [mark(), mark(yaw=1.0)], "mark A is there 2 times, must be there once"),
+        ("marks", [mark(name="the left one")], "marks.0.name is 'the left one'"),
         ("cart_radius", 0.9, "cart_radius is 0.9, must be at most 0.8"),
         ("grades.empty.carts", -1, "grades.empty.carts is -1, must be greater than or equal to 0"),
         ("grades.empty.carts", True, "grades.empty.carts is True, must be a valid integer"),
@@ -194,6 +202,7 @@ def test_without_walls_regions_may_reach_the_edge_and_rounding_never_refuses(tmp
     yard = content()
     yard["floor"] = {"x": [0.0, 0.3], "y": [0.0, 0.3], "walled": True}
     yard["robot"]["radius"] = 0.1
+    yard["marks"] = []
     yard["start"] = yard["goal"] = {"x": [0.1, 0.2], "y": [0.1, 0.2]}  # 0.3 - 0.1 < 0.2 in floating point
     assert Yard.model_validate(yard).start.x == (0.1, 0.2)
     yard["start"] = {"x": [0.0, 0.3], "y": [0.0, 0.3]}

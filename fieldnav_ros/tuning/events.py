@@ -115,6 +115,22 @@ class ReportIgnored(Frozen):
     reason: Text
 
 
+class EpisodeObserved(Frozen):
+    """The way to a goal that somebody else gave, in a match: scored for the record, feeding no decision.
+
+    ``set_id`` is the champion's where guidance was seen to hold its numbers, else empty.
+    """
+
+    kind: Literal["episode_observed"] = "episode_observed"
+    name: Text
+    set_id: Text
+    layout: Layout
+    time_limit: Positive
+    outcome: Outcome
+    cost: float | None
+    source: Text = "judge"
+
+
 class GenerationClosed(Frozen):
     """Mean costs of a generation's candidates over the ``blocks`` layouts on which all of them ran.
 
@@ -225,7 +241,7 @@ class Noted(Frozen):
     text: Text
 
 
-_Acts = SessionBegun | BatchOpened | EpisodeScored | EpisodeVoided | ReportIgnored | FloorTimeUsed | Noted
+_Acts = SessionBegun | BatchOpened | EpisodeScored | EpisodeVoided | ReportIgnored | FloorTimeUsed | Noted | EpisodeObserved
 _Search = GenerationClosed | StageBegun | ChallengerNamed
 _Verdict = PairCompared | VerdictReached | ChampionChanged | SessionEnded
 Event = Annotated[_Acts | _Search | _Verdict | Paused | Released | Resumed, Field(discriminator="kind")]

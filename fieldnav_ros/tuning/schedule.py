@@ -55,6 +55,10 @@ class Plan(NamedTuple):
         """Expected floor time of one episode with its reset (s)."""
         return self.mean_episode_s + self.mean_reset_s
 
+    def fits_one_more(self, since_s: float) -> bool:
+        """Whether another episode with its reset is expected to end in time, ``since_s`` after the last one ended."""
+        return self.floor_left_s - since_s >= self.step_s
+
     @property
     def used_up(self) -> bool:
         """Whether nothing is left at all; with some time left an episode may still end in it."""

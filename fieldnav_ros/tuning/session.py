@@ -25,7 +25,7 @@ from collections.abc import Sequence
 from typing import NamedTuple
 
 from fieldnav_ros.errors import InputError, WorkError
-from fieldnav_ros.model import Outcome, OutcomeKind
+from fieldnav_ros.model import Layout, Outcome, OutcomeKind
 from fieldnav_ros.parameters import DEFAULTS, ParameterSet
 from fieldnav_ros.tuning import events as ev
 from fieldnav_ros.tuning.cost import cost
@@ -166,6 +166,20 @@ class Session:
         return (
             [] if self.ended else self._followed([ev.FloorTimeUsed(seconds=_seconds("floor time", seconds), why=why)])
         )
+
+    def ignore(self, episode_id: int, outcome: Outcome, source: str, reason: str) -> list[Event]:
+        """Keep a report that must not count, and why; for what the caller knows and the session does not."""
+        return [ev.ReportIgnored(episode_id=episode_id, outcome=outcome, source=source, reason=reason)]
+
+    def observe(self, name: str, set_id: str, layout: Layout, outcome: Outcome, source: str = "judge") -> list[Event]:
+        """Score an episode that the session did not ask for; it changes no state and feeds no verdict."""
+        limit = self.config.time_limit
+        value = cost(outcome, limit)
+        return [
+            ev.EpisodeObserved(
+                name=name, set_id=set_id, layout=layout, time_limit=limit, outcome=outcome, cost=value, source=source
+            )
+        ]
 
     def note(self, source: str, text: str) -> list[Event]:
         """Keep something for the record that changes nothing."""

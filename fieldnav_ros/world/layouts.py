@@ -13,13 +13,15 @@ from fieldnav_ros.yard import Region, Yard
 TRIES = 1000
 
 
-def draw(yard: Yard, grade_name: str, rng: np.random.Generator) -> Layout:
+def draw(yard: Yard, grade_name: str, rng: np.random.Generator, at_marks: bool = False) -> Layout:
     """Draw one layout of the given grade; carts keep ``yard.spacing`` from robot, goal and each other.
 
-    Raises InputError where the yard is too full for its carts.
+    ``at_marks`` takes the start from the yard's marks. Raises InputError where there are none, and where the yard is
+    too full for its carts.
     """
     grade = yard.grade(grade_name)
-    start, goal = _pose(yard.start, rng), _pose(yard.goal, rng)
+    start = _mark(yard, rng) if at_marks else _pose(yard.start, rng)
+    goal = _pose(yard.goal, rng)
     carts: list[Obstacle] = []
     taken = [(start.x, start.y, yard.robot.radius), (goal.x, goal.y, yard.robot.radius)]
     for _ in range(grade.carts):
@@ -36,6 +38,13 @@ def draw_many(yard: Yard, grade_name: str, count: int, seed: int) -> list[Layout
     """Draw ``count`` layouts; the same seed gives the same layouts."""
     rng = np.random.default_rng(seed)
     return [draw(yard, grade_name, rng) for _ in range(count)]
+
+
+def _mark(yard: Yard, rng: np.random.Generator) -> Pose:
+    if not yard.marks:
+        raise InputError.of(f"marks in yard {yard.name!r}", 0, "at least 1 for layouts that start at marks")
+    mark = yard.marks[int(rng.integers(len(yard.marks)))]
+    return Pose(x=mark.x, y=mark.y, yaw=mark.yaw)
 
 
 def _pose(region: Region, rng: np.random.Generator) -> Pose:

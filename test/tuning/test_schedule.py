@@ -28,6 +28,17 @@ def test_what_is_seen_soon_outweighs_the_guesses() -> None:
     assert reset == pytest.approx(0.5, abs=0.15)
 
 
+@pytest.mark.parametrize(
+    ("used", "since", "fits"),
+    [(0.0, 0.0, True), (1195.0, 0.0, True), (1195.1, 0.0, False), (1180.0, 14.9, True), (1180.0, 15.1, False)],
+)
+def test_an_episode_fits_where_it_and_its_reset_are_expected_to_end_in_time(
+    used: float, since: float, fits: bool
+) -> None:
+    """By hand: 1200 s, of which an episode and its reset take 3 + 2."""
+    assert make_plan(CONFIG, Times(), used, 1200.0, in_verdict=False).fits_one_more(since) is fits
+
+
 def test_in_the_verdict_all_that_is_left_is_for_it() -> None:
     plan = make_plan(CONFIG, Times(), 1000.0, 1200.0, in_verdict=True)
     assert plan.search_episodes == 0

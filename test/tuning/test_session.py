@@ -473,3 +473,17 @@ def test_the_summary_is_plain_numbers() -> None:
         assert all(value is None or isinstance(value, (str, int, float)) for value in summary.values())
         assert summary["episodes_done"] == len(the(log, ev.EpisodeScored))
     assert phases == {"search", "verdict", "ended"}
+
+
+def test_observed_and_ignored_episodes_change_nothing_and_are_scored_by_the_same_rule() -> None:
+    """In a match the champion is watched: what is seen then must not tip a verdict."""
+    session, log = started(SHORT)
+    before, layout = session.state, session.pending()[0].layout
+    costs = {OutcomeKind.ARRIVED: 3.0, OutcomeKind.CONTACT: 2 * SHORT.time_limit, OutcomeKind.VOID: None}
+    for kind, value in costs.items():
+        (event,) = session.observe("o1", "initial", layout, Outcome(kind=kind, time=3.0))
+        assert isinstance(event, ev.EpisodeObserved)
+        assert event.cost == value
+        commit(session, log, [event])
+    commit(session, log, session.ignore(1, Outcome(kind=OutcomeKind.ARRIVED, time=1.0), "operator", "judge is asked"))
+    assert session.state == before

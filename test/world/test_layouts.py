@@ -61,6 +61,26 @@ def test_start_poses_and_courses_are_spread_evenly() -> None:
     assert spread([math.hypot(cart.vx, cart.vy) for cart in carts], *YARD.grades["moving"].speed) > 0.001
 
 
+@settings(deadline=None, max_examples=40)
+@given(seed=st.integers(0, 2**32))
+def test_layouts_at_marks_start_on_one_of_them_and_end_where_others_end(seed: int) -> None:
+    layout = draw(YARD, "moving", np.random.default_rng(seed), at_marks=True)
+    assert YARD.mark_at(layout.start) in {mark.name for mark in YARD.marks}
+    assert YARD.goal.x[0] <= layout.goal.x <= YARD.goal.x[1]
+    assert YARD.mark_at(layout.goal) is None
+
+
+def test_every_mark_is_used() -> None:
+    found = {YARD.mark_at(draw(YARD, "empty", np.random.default_rng(seed), at_marks=True).start) for seed in range(60)}
+    assert found == {mark.name for mark in YARD.marks}
+
+
+def test_no_marks_no_layouts_at_marks() -> None:
+    bare = YARD.model_copy(update={"marks": ()})
+    with pytest.raises(InputError, match="marks in yard 'parcel yard' is 0, must be at least 1"):
+        draw(bare, "moving", np.random.default_rng(0), at_marks=True)
+
+
 def test_yard_too_full_is_said_so() -> None:
     full = YARD.model_copy(update={"spacing": 5.0})
     with pytest.raises(InputError, match="no room for its carts: no place kept 5 m"):
