@@ -122,7 +122,7 @@ class FieldnavNode(Node):
 
 
 def incoming_qos(settings: Mapping[str, Any], otherwise: QoSProfile = SENSOR) -> QoSProfile:
-    """Return the QoS of pose and obstacles as ``match_stamps`` and ``reliable`` ask for it, ``otherwise`` by default."""
+    """Return the QoS of pose and obstacles: as ``match_stamps`` or ``reliable`` asks, else ``otherwise``."""
     if settings["match_stamps"]:
         return DEEP
     return RELIABLE if settings["reliable"] else otherwise

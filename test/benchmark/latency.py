@@ -27,6 +27,7 @@ sys.path.insert(0, str(HERE.parents[2]))
 import rclpy
 from geometry_msgs.msg import PoseArray, PoseStamped, TwistStamped
 from rclpy.context import Context
+from rclpy.executors import Executor
 from rclpy.experimental.events_executor import EventsExecutor
 from rclpy.qos import qos_profile_sensor_data
 
@@ -95,7 +96,7 @@ class Side:
         self.took.clear()
 
 
-def drive(side: Side, executor: EventsExecutor, rate: float, seconds: float) -> dict[str, float]:
+def drive(side: Side, executor: Executor, rate: float, seconds: float) -> dict[str, float]:
     """Send poses at a rate (Hz) and return the figures (ms) of the answers."""
     side.clear()
     due = time.perf_counter()
@@ -114,7 +115,7 @@ def drive(side: Side, executor: EventsExecutor, rate: float, seconds: float) -> 
     }  # fmt: skip
 
 
-def wait_for(side: Side, executor: EventsExecutor) -> None:
+def wait_for(side: Side, executor: Executor) -> None:
     """Send until an answer comes."""
     end = time.monotonic() + START_LIMIT
     while len(side.took) < 20:
