@@ -79,6 +79,7 @@ class Pilot:
         self.goal: Pose | None = None
         self.episode: str | None = None
         self._time_limit = 0.0
+        self._stay = False
         self.held = False
         self.standing: Halt = NO_GOAL
         self._blind: dict[str, str] = {}
@@ -96,9 +97,12 @@ class Pilot:
         """Set the goal outside episodes; None: it is lost."""
         self.goal, self._arrived = goal, False
 
-    def start_episode(self, episode: str, goal: Pose, time_limit: float) -> None:
-        """Take the episode's goal and forget everything from before; ``time_limit`` in s."""
-        self.episode, self.goal, self._time_limit = episode, goal, time_limit
+    def start_episode(self, episode: str, goal: Pose, time_limit: float, stay: bool = False) -> None:
+        """Take the episode's goal and forget everything from before; ``time_limit`` in s.
+
+        ``stay``: stand where the goal is reached, as outside episodes; else who judges says when it is over.
+        """
+        self.episode, self.goal, self._time_limit, self._stay = episode, goal, time_limit, stay
         self._arrived, self._episode_start = False, None
         self._start_anew()
 
@@ -183,7 +187,9 @@ class Pilot:
             return self._stand(Halt("bad_obstacles", next(iter(self._blind.values()))))
         if self.episode is None and self.rules.match_stamps:
             return self._stand(NO_EPISODE)
-        halt = self._overdue(reading) if self.episode is not None else self._arrival(reading, goal)
+        halt = self._overdue(reading)
+        if halt is None and (self.episode is None or self._stay):
+            halt = self._arrival(reading, goal)
         if halt is not None:
             return self._stand(halt)
         if self.rules.match_stamps and self.crowd.stamp != reading.stamp:

@@ -65,6 +65,29 @@ def test_orders_are_those_of_guide() -> None:
         assert (order.heading, order.v, order.w) == (advice.heading[0], advice.v[0], advice.w[0])
 
 
+def test_a_drive_ends_at_its_goal_and_an_episode_by_whoever_judges_it() -> None:
+    there = pose(0, GOAL.x, GOAL.y, GOAL.yaw)
+    drive, episode = pilot(), pilot()
+    drive.start_episode("d", GOAL, 10.0, stay=True)
+    episode.start_episode("e", GOAL, 10.0)
+    assert kind(give(episode, there)) == "order"
+    assert kind(give(drive, there)) == "arrived"
+    assert kind(give(drive, pose(20, GOAL.x - 0.2, GOAL.y, 0.0))) == "pose_jump"
+    assert kind(give(drive, pose(40, GOAL.x - 0.19, GOAL.y, 0.0))) == "arrived", "having arrived it stays"
+    assert drive.episode == "d", "until it is told to stop: numbers must not change meanwhile"
+    drive.start_episode("d2", GOAL, 10.0, stay=True)
+    assert kind(give(drive, pose(60, GOAL.x - 0.19, GOAL.y, 0.0))) == "order"
+
+
+def test_a_drive_is_given_up_after_its_time() -> None:
+    made = pilot()
+    made.start_episode("d", GOAL, 1.0, stay=True)
+    kinds = [kind(give(made, pose(20.0 * number))) for number in range(200)]
+    assert kinds[0] == "order"
+    assert "episode_overdue" in kinds
+    assert kinds[-1] == "no_goal"
+
+
 def test_a_repeated_pose_gives_the_same_order_and_time_does_not_pass() -> None:
     made, other = pilot(), pilot()
     for number in range(4):

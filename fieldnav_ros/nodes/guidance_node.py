@@ -33,7 +33,7 @@ from fieldnav_ros.nodes.base import (
 )
 from fieldnav_ros.nodes.declare import tunable_settings
 from fieldnav_ros.nodes.guidance_settings import SETTINGS
-from fieldnav_ros.nodes.payloads import RunEpisode, decode_outcome, decode_request
+from fieldnav_ros.nodes.payloads import DriveTo, ObserveEpisode, RunEpisode, decode_outcome, decode_request
 from fieldnav_ros.parameters import ParameterSet
 from fieldnav_ros.pilot import Halt, Order, Pilot, PilotRules
 from fieldnav_ros.tracking import Rules
@@ -52,6 +52,9 @@ class GuidanceNode(FieldnavNode):
         yard = yard_of(self.settings["yard"])
         self.frame: str = self.settings["frame"] or yard.frame
         self._by_arrival = self.settings["pose_age_from"] == "arrival" or self.settings["match_stamps"]
+        self._by_poses = self.settings["pose_age_from"] == "poses" and not self._by_arrival
+        self._newest = (0, 0)  # of the poses: stamp, and when it came on the steady clock (ns)
+        self._running: RunEpisode | DriveTo | None = None
         self._floor, self._arrival, self._robot = yard.floor, self._arrival_of(yard), self._robot_of(yard)
         self.pilot = self._make_pilot(yard)
         self._ended = ""
@@ -120,6 +123,8 @@ class GuidanceNode(FieldnavNode):
         except InputError as error:
             self._stop(self.pilot.refuse(Halt("bad_pose", str(error))))
             return
+        if reading.stamp != self._newest[0]:
+            self._newest = reading.stamp, time.monotonic_ns()
         now = self._now()
         self._act(self.pilot.on_pose(reading, now if self._by_arrival else reading.stamp, now))
 
@@ -161,20 +166,22 @@ class GuidanceNode(FieldnavNode):
             self._watch()
 
     def on_request(self, message: String) -> None:
-        """Begin or end an episode."""
+        """Begin or end an episode, or a drive to where the next one starts."""
         request = self.decoded(decode_request, message)
-        if isinstance(request, RunEpisode):
+        if isinstance(request, (RunEpisode, DriveTo)):
             self._begin(request)
+        elif isinstance(request, ObserveEpisode):
+            return  # somebody else's goal, judged by others
         elif request is not None and self.pilot.episode is not None:
             self._end(self.pilot.episode, f"stopped by {request.source or 'request'}")
 
     def on_outcome(self, message: String) -> None:
         """End the episode that the outcome is about."""
         outcome = self.decoded(decode_outcome, message)
-        if outcome is not None:
+        if outcome is not None and isinstance(self._running, RunEpisode) and self._running.ended_by(outcome):
             self._end(outcome.episode, outcome.kind.value)
 
-    def _begin(self, request: RunEpisode) -> None:
+    def _begin(self, request: RunEpisode | DriveTo) -> None:
         running = self.pilot.episode
         if request.episode == self._ended or (request.episode == running):
             return  # a repeated message
@@ -183,7 +190,11 @@ class GuidanceNode(FieldnavNode):
             reason = f"episode {request.episode} not begun: frame is {request.frame!r}, must be {self.frame!r}"
             self._stop(self.pilot.refuse(Halt("bad_goal", reason)))
             return
-        self.pilot.start_episode(request.episode, request.layout.goal, request.time_limit)
+        if isinstance(request, DriveTo):
+            self.pilot.start_episode(request.episode, request.goal, request.time_limit, stay=True)
+        else:
+            self.pilot.start_episode(request.episode, request.layout.goal, request.time_limit)
+        self._running = request
         self._order = None
         self._send(0.0, 0.0, self.get_clock().now().nanoseconds)  # an episode starts from rest: say so to the base
 
@@ -242,6 +253,9 @@ class GuidanceNode(FieldnavNode):
             self._stop(halt)
 
     def _now(self) -> int:
+        if self._by_poses:
+            stamp, came = self._newest
+            return stamp + time.monotonic_ns() - came
         return time.monotonic_ns() if self._by_arrival else int(self.get_clock().now().nanoseconds)
 
     def _moment(self, stamp: int) -> int:

@@ -18,8 +18,9 @@ SETTINGS: tuple[Setting, ...] = (
     Setting(
         "pose_age_from",
         "stamp",
-        "stamp: a pose is as old as its stamp says; arrival: as its arrival, for cameras whose clock is not in step",
-        choices=("stamp", "arrival"),
+        "stamp: a pose is as old as its stamp says; arrival: as its arrival, for cameras whose clock is not in step; "
+        "poses: time is what the poses' stamps tell, for simulators at another speed than real time",
+        choices=("stamp", "arrival", "poses"),
     ),
     Setting("obstacle_odometry", [""], "topics of nav_msgs/Odometry, one for each obstacle that reports itself"),
     Setting("obstacle_radius", 0.0, f"radius of obstacles in m; {SAME}", 0.0, 10.0),

@@ -30,7 +30,7 @@ from fieldnav_ros.nodes.base import (
 )
 from fieldnav_ros.nodes.convert import POSE_TYPES, reading_from, sighting_from
 from fieldnav_ros.nodes.declare import Setting
-from fieldnav_ros.nodes.payloads import EpisodeOutcome, RunEpisode, decode_outcome, decode_request, encode
+from fieldnav_ros.nodes.payloads import EpisodeOutcome, EpisodeRequested, decode_outcome, decode_request, encode
 from fieldnav_ros.tracking import Rules as TrackingRules
 from fieldnav_ros.world.watch import START_SLACK, Ruling
 
@@ -77,7 +77,7 @@ class JudgeNode(FieldnavNode):
             given["obstacle_radius"] or self._yard.cart_radius,
             Patience.model_validate({name: given[name] for name in Patience.model_fields}),
         )
-        self._episode: RunEpisode | None = None
+        self._episode: EpisodeRequested | None = None
         self._early: deque[Any] = deque(maxlen=EARLY)
         self._ended = ""
         incoming = incoming_qos(given)
@@ -100,14 +100,14 @@ class JudgeNode(FieldnavNode):
         if request is None:
             return
         running = self._episode.episode if self._episode else ""
-        if not isinstance(request, RunEpisode):
+        if not isinstance(request, EpisodeRequested):
             if running:
                 self._drop("stopped by request, not judged")
             return
         if request.episode not in (running, self._ended):
             self._begin(request)
 
-    def _begin(self, request: RunEpisode) -> None:
+    def _begin(self, request: EpisodeRequested) -> None:
         self._episode = request
         self._judging.begin(request.layout, request.arrival, request.time_limit, time.monotonic())
         self.state(f"judging episode {request.episode}")
@@ -119,7 +119,7 @@ class JudgeNode(FieldnavNode):
 
     def _on_outcome(self, message: String) -> None:
         outcome = self.decoded(decode_outcome, message)
-        if outcome is not None and self._episode is not None and outcome.episode == self._episode.episode:
+        if outcome is not None and self._episode is not None and self._episode.ended_by(outcome):
             self._drop(f"ended by the {outcome.source}: {outcome.kind.value}")
 
     def _on_pose(self, message: Any) -> None:

@@ -22,6 +22,7 @@ from fieldnav_ros.nodes.base import DEEP, LATCHED, OK, RELIABLE, WARN, YARD, Fie
 from fieldnav_ros.nodes.convert import nanoseconds, obstacles_message, pose_message, speeds_from
 from fieldnav_ros.nodes.declare import Setting
 from fieldnav_ros.nodes.payloads import RunEpisode, decode_outcome, decode_request
+from fieldnav_ros.world.layouts import draw
 from fieldnav_ros.world.plant import STEP
 from fieldnav_ros.world.stage import Stage
 
@@ -36,6 +37,12 @@ SETTINGS: tuple[Setting, ...] = (
     Setting("listeners", 2.0, "subscribers to pose without which an episode does not start, lockstep only", 0.0, 100.0),
     Setting("speed", 1.0, "multiple of real time, paced mode only", 0.05, 20.0),
     Setting("stamped_cmd", True, "cmd_vel as TwistStamped; false: Twist, paced mode only"),
+    Setting(
+        "resets", True, "place robot and carts where an episode starts; false: a floor that knows of no episodes, "
+        "on which only commands move the robot, paced mode only",
+    ),
+    Setting("grade", "moving", "grade of the yard for such a floor's carts"),
+    Setting("seed", 0, "seed of where everything stands at first on such a floor", 0, 2**31),
     Setting("command_timeout", 0.3, "s without a command after which the robot stops, paced mode only", 0.02, 10.0),
 )
 REPEAT = 0.02
@@ -52,6 +59,8 @@ STEP_NS = round(STEP * NANO)
 PAUSE_NS = NANO
 """Time between the stamps of two episodes, so that nobody takes the reset for driving."""
 MOST_STEPS = 50
+NOISE_TIME = 300.0
+"""Seconds after which the noise of a floor without episodes repeats itself."""
 
 
 class SimulatorNode(FieldnavNode):
@@ -65,14 +74,18 @@ class SimulatorNode(FieldnavNode):
         if not paced and not stamped:
             self.leave()
             raise InputError.of("stamped_cmd", stamped, "true in lockstep, which needs the commands' stamps")
+        if not paced and not self.settings["resets"]:
+            self.leave()
+            raise InputError.of("resets", False, "true in lockstep, which starts each episode anew")
         self.episode: RunEpisode | None = None
         self._ended = ""
         self._pose = self.create_publisher(PoseStamped, "pose", RELIABLE if paced else DEEP)
         self._obstacles = self.create_publisher(PoseArray, "obstacles", RELIABLE if paced else DEEP)
         self.mode: Lockstep | Paced = Paced(self) if paced else Lockstep(self)
         self.create_subscription(TwistStamped if stamped else Twist, "cmd_vel", self._on_command, RELIABLE)
-        self.create_subscription(String, "episode/request", self._on_request, LATCHED)
-        self.create_subscription(String, "episode/outcome", self._on_outcome, RELIABLE)
+        if self.settings["resets"]:
+            self.create_subscription(String, "episode/request", self._on_request, LATCHED)
+            self.create_subscription(String, "episode/outcome", self._on_outcome, RELIABLE)
         self.log.info(f"simulating {self.yard.name!r}, {self.settings['mode']}")
 
     def publish(self, stage: Stage, stamp: int) -> None:
@@ -136,7 +149,7 @@ class SimulatorNode(FieldnavNode):
 
     def _on_outcome(self, message: String) -> None:
         outcome = self.decoded(decode_outcome, message)
-        if outcome is not None and self.episode is not None and outcome.episode == self.episode.episode:
+        if outcome is not None and self.episode is not None and self.episode.ended_by(outcome):
             self.end(outcome.kind.value)
 
 
@@ -223,14 +236,16 @@ class Paced:
     """Runs on by itself at a multiple of real time; outside episodes too, so that a goal sent by hand works.
 
     Stamps are the node's clock at the beginning plus the time simulated since: at another speed than 1 they leave the
-    clock, and guidance must take a pose's age from its arrival.
+    clock, and guidance must take a pose's age from the poses' own time.
     """
 
     def __init__(self, node: SimulatorNode) -> None:
         self._node = node
         self._v = self._w = 0.0
         self._heard = -1e9
-        self._place(Stage(node.yard, _idle_layout(node), 60.0))
+        floor = not node.settings["resets"]
+        layout = _floor_layout(node) if floor else _idle_layout(node)
+        self._place(Stage(node.yard, layout, NOISE_TIME, walls_hold=floor))
         node.create_timer(STEP / node.settings["speed"], self._tick)
 
     def begin(self, request: RunEpisode) -> None:
@@ -276,6 +291,11 @@ def _idle_layout(node: SimulatorNode) -> Layout:
     region, goal = node.yard.start, node.yard.goal
     start = Pose(x=sum(region.x) / 2.0, y=sum(region.y) / 2.0, yaw=sum(region.yaw) / 2.0)
     return Layout(start=start, goal=Pose(x=sum(goal.x) / 2.0, y=sum(goal.y) / 2.0, yaw=sum(goal.yaw) / 2.0))
+
+
+def _floor_layout(node: SimulatorNode) -> Layout:
+    """Return where robot and carts stand when a floor that knows of no episodes is opened."""
+    return draw(node.yard, node.settings["grade"], np.random.default_rng(node.settings["seed"]))
 
 
 def main(args: Sequence[str] | None = None) -> int:

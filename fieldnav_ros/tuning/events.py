@@ -241,10 +241,11 @@ class Noted(Frozen):
     text: Text
 
 
-_Acts = SessionBegun | BatchOpened | EpisodeScored | EpisodeVoided | ReportIgnored | FloorTimeUsed | Noted | EpisodeObserved
+_Acts = SessionBegun | BatchOpened | EpisodeScored | EpisodeVoided | ReportIgnored | FloorTimeUsed
+_Watched = EpisodeObserved | Noted
 _Search = GenerationClosed | StageBegun | ChallengerNamed
 _Verdict = PairCompared | VerdictReached | ChampionChanged | SessionEnded
-Event = Annotated[_Acts | _Search | _Verdict | Paused | Released | Resumed, Field(discriminator="kind")]
+Event = Annotated[_Acts | _Watched | _Search | _Verdict | Paused | Released | Resumed, Field(discriminator="kind")]
 _ADAPTER: TypeAdapter[Event] = TypeAdapter(Event)
 
 
