@@ -10,7 +10,8 @@ from pathlib import Path
 
 import pytest
 from hypothesis import settings
-from ros_domain import claim_domain
+
+from fieldnav_ros.nodes.domain import claim_domain
 
 # A busy machine is no fault: nothing here asserts how long a single example takes.
 settings.register_profile("fieldnav", settings.default, deadline=None)

@@ -12,7 +12,8 @@ from collections.abc import Callable
 from pathlib import Path
 
 import pytest
-from ros_domain import claim_domain
+
+from fieldnav_ros.nodes.domain import claim_domain
 
 PRINT_ENVIRONMENT = """
 import json, os, pytest
@@ -33,8 +34,7 @@ Runner = Callable[[str, bool], "subprocess.CompletedProcess[str]"]
 @pytest.fixture
 def run_pytest(root: Path, tmp_path: Path) -> Runner:
     """Return a function that runs the suite's conftest on a small module, with ROS hidden if wanted."""
-    for name in ("conftest.py", "ros_domain.py"):
-        shutil.copy(root / "test" / name, tmp_path)
+    shutil.copy(root / "test" / "conftest.py", tmp_path)
     (tmp_path / "test_small.py").write_text(PRINT_ENVIRONMENT)
     (tmp_path / "pytest.ini").write_text("[pytest]\nmarkers =\n    ros: needs rclpy\n")
     (tmp_path / "hide_ros.py").write_text(
@@ -47,7 +47,7 @@ def run_pytest(root: Path, tmp_path: Path) -> Runner:
         return subprocess.run(
             [sys.executable, "-m", "pytest", "-s", "-rs", "-p", "no:cacheprovider", *options],
             cwd=tmp_path,
-            env={**os.environ, "CI": ci, "PYTEST_ADDOPTS": ""},
+            env={**os.environ, "CI": ci, "PYTEST_ADDOPTS": "", "PYTHONPATH": str(root)},
             capture_output=True,
             text=True,
             timeout=60,

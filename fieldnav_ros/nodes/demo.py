@@ -15,8 +15,9 @@ from typing import Any
 from rclpy.context import Context
 
 from fieldnav_ros.errors import InputError, WorkError
+from fieldnav_ros.nodes.domain import Domain
 from fieldnav_ros.nodes.payloads import TunerStatus
-from fieldnav_ros.nodes.processes import Domain, Processes
+from fieldnav_ros.nodes.processes import Processes
 from fieldnav_ros.nodes.tuner_node import SESSION_ENDED
 from fieldnav_ros.nodes.watch import Watch
 from fieldnav_ros.parameters import DEFAULTS

@@ -3,9 +3,7 @@
 from __future__ import annotations
 
 import os
-import random
 import signal
-import socket
 import subprocess
 import sys
 import tempfile
@@ -16,41 +14,8 @@ from typing import IO
 
 from fieldnav_ros.errors import WorkError
 
-DOMAINS = range(1, 102)
-"""Domain ids whose ports are free on every platform (ROS 2 documentation, "The ROS_DOMAIN_ID")."""
 GRACE = 5.0
 """Seconds that a node has between SIGINT and SIGKILL."""
-
-
-class Domain:
-    """A ROS domain of this machine alone, held for as long as this object lives.
-
-    A simulated robot's commands must not reach a real one: so never the domain that the user works in.
-    """
-
-    def __init__(self) -> None:
-        used = os.environ.get("ROS_DOMAIN_ID", "0")
-        choice = [number for number in DOMAINS if str(number) != used]
-        random.SystemRandom().shuffle(choice)
-        for number in choice:
-            lock = socket.socket()
-            try:
-                lock.bind(("127.0.0.1", 7300 + number))
-            except OSError:
-                lock.close()
-                continue
-            self.number, self._lock = number, lock
-            return
-        raise WorkError("no ROS domain is free on this machine")
-
-    def environment(self) -> dict[str, str]:
-        """Return the variables that keep a process to this domain and this machine."""
-        prefix = os.environ.get("AMENT_PREFIX_PATH") or sys.prefix
-        return {
-            "ROS_DOMAIN_ID": str(self.number),
-            "ROS_AUTOMATIC_DISCOVERY_RANGE": "LOCALHOST",
-            "AMENT_PREFIX_PATH": prefix,
-        }
 
 
 class Processes:

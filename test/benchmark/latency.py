@@ -33,7 +33,7 @@ from rclpy.qos import qos_profile_sensor_data
 
 from fieldnav_ros.nodes.base import LATCHED, RELIABLE
 from fieldnav_ros.nodes.convert import command_message, nanoseconds, obstacles_message, pose_message
-from fieldnav_ros.nodes.processes import Domain
+from fieldnav_ros.nodes.domain import Domain
 
 OBSTACLES = 10
 FRAME = "map"
