@@ -11,8 +11,8 @@ from fieldnav_ros.parameters import FloatArray
 from fieldnav_ros.survey.scene import Scene
 from fieldnav_ros.world.paths import Paths
 
-OVER = np.pi / 2
-"""Angle (rad) from which on a heading has turned over: what is less still leads on."""
+OVER = np.pi / 3
+"""Angle (rad) beyond which a change of heading is a flip: following the old one brings less than half of the way."""
 PARTS = 16
 """Pieces of time in which a turn is summed up."""
 
@@ -47,8 +47,8 @@ def most_turn(speed: Any, lateral_accel: float, robot: Robot, way: Any = 0.0) ->
 def crossings(scene: Scene, paths: Paths, first: int = 0) -> FloatArray:
     """Return where driven paths meet flips: place (m, m), angle (rad) and number of the path, (N, 4).
 
-    A flip is a change of the heading asked for (see ``world.paths.Paths``) by more than a quarter turn, and by more
-    than ``most_turn`` at the speed that the robot has there, with the set's lateral acceleration R_m. Along the path it
+    A flip is a change of the heading asked for (see ``world.paths.Paths``) by more than OVER, and by more than
+    ``most_turn`` at the speed that the robot has there, with the set's lateral acceleration R_m. Along the path it
     is the change from one pose to the next, whose way is added to the robot's length; across it, the change to what
     the field would ask for ``world.paths.ASIDE`` to either side. ``first`` is the number of the first path.
     """
