@@ -12,6 +12,7 @@ from typing import Any
 
 from fieldnav_ros import __version__
 from fieldnav_ros.arguments import number
+from fieldnav_ros.bags import command as bags
 from fieldnav_ros.errors import FieldnavError, InputError
 from fieldnav_ros.prepare import command as prepare
 from fieldnav_ros.report import command as report
@@ -43,6 +44,12 @@ def _survey(arguments: argparse.Namespace) -> Summary:
     return summary
 
 
+def _rescore(arguments: argparse.Namespace) -> Summary:
+    from fieldnav_ros.nodes.payloads import decode_request
+
+    return bags.run(arguments, decode_request, print)
+
+
 def build_parser() -> argparse.ArgumentParser:
     """Return the parser of all verbs."""
     parser = _Parser(prog="fieldnav", description="Retune a robot's heading-field guidance.", epilog=SAFETY)
@@ -60,6 +67,7 @@ def build_parser() -> argparse.ArgumentParser:
     prepare.add_arguments(_verb(verbs, "pretune", prepare.run, "tune in simulation; writes a prior for the site"))
     survey_command.add_arguments(_verb(verbs, "survey", _survey, "the field as a picture, with its faults marked"))
     report.add_arguments(_verb(verbs, "report", _report, "one page with pictures from a session's ledger"))
+    bags.add_arguments(_verb(verbs, "rescore", _rescore, "outcomes again from bags, beside those of the ledger"))
     return parser
 
 

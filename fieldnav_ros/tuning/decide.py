@@ -15,6 +15,7 @@ import numpy as np
 from fieldnav_ros.model import Layout
 from fieldnav_ros.tuning import events as ev
 from fieldnav_ros.tuning.curriculum import STAGE_WIDENING, stage_over
+from fieldnav_ros.tuning.imported import warm_start
 from fieldnav_ros.tuning.schedule import Plan, alpha_of_round, make_plan
 from fieldnav_ros.tuning.search import Search
 from fieldnav_ros.tuning.space import SPACE
@@ -27,11 +28,15 @@ LARGEST_SEED = 2**53  # so that a seed survives JSON readers that hold numbers a
 
 
 def start_search(state: State) -> Search:
-    """Return the engine before the stage's first generation: at its prior, or around the first set in service."""
+    """Return the engine before the stage's first generation.
+
+    It starts at the stage's prior, else at the best of earlier recordings, else around the first set in service.
+    """
     config = state.told
     seed = (config.seed, ENGINE, *([state.stage.number] if state.stage.number else []))
-    if state.prior is not None:
-        return Search.from_prior(state.prior, seed, config.population)
+    prior = state.prior or warm_start(state.imported)
+    if prior is not None:
+        return Search.from_prior(prior, seed, config.population)
     return Search(SPACE.to_unit(state.initial.parameters), config.sigma, seed, config.population)
 
 

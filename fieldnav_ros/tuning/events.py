@@ -70,6 +70,30 @@ class SessionBegun(Frozen):
     about: About | None = None
 
 
+class RecordedEpisode(Frozen):
+    """An episode of an earlier session, judged from its bag: the bag's name, how it ended, its cost (s)."""
+
+    bag: Text
+    outcome: Outcome
+    cost: float
+
+
+class EvidenceImported(Frozen):
+    """Recorded episodes of one set, from before this session; comes before ``session_begun``.
+
+    They place the search and tell how long episodes take. No verdict rests on them.
+    """
+
+    kind: Literal["evidence_imported"] = "evidence_imported"
+    source: Text = Field(description="the ledger that the recordings belong to")
+    model: Text = Field(default="", description="the field that guided, see ``guide.MODELS``")
+    grade: str = Field(min_length=1)
+    time_limit: Positive
+    set_id: Text
+    parameters: ParameterSet
+    episodes: tuple[RecordedEpisode, ...] = Field(min_length=1, max_length=100_000)
+
+
 class BatchOpened(Frozen):
     """Episodes to run, in this order: a generation of the search, or pairs for the verdict."""
 
@@ -242,7 +266,7 @@ class Noted(Frozen):
 
 
 _Acts = SessionBegun | BatchOpened | EpisodeScored | EpisodeVoided | ReportIgnored | FloorTimeUsed
-_Watched = EpisodeObserved | Noted
+_Watched = EpisodeObserved | EvidenceImported | Noted
 _Search = GenerationClosed | StageBegun | ChallengerNamed
 _Verdict = PairCompared | VerdictReached | ChampionChanged | SessionEnded
 Event = Annotated[_Acts | _Watched | _Search | _Verdict | Paused | Released | Resumed, Field(discriminator="kind")]

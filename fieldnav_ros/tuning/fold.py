@@ -8,7 +8,9 @@ from typing import Any
 
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.tuning import events as ev
+from fieldnav_ros.tuning import imported
 from fieldnav_ros.tuning.cost import cost_bound
+from fieldnav_ros.tuning.schedule import Times
 from fieldnav_ros.tuning.search import Generation
 from fieldnav_ros.tuning.state import NO_COSTS, Batch, Control, InService, Round, Stage, State, Tally
 from fieldnav_ros.tuning.verdict import Evidence
@@ -18,10 +20,16 @@ FUTILE = 0.05  # a challenger is dropped early once it is shown, at this level, 
 
 def fold(state: State, event: ev.Event) -> State:
     """Return the state after one more event; InputError where the event cannot follow."""
-    if state.config is None and not isinstance(event, ev.SessionBegun):
+    if state.config is None and not isinstance(event, (ev.SessionBegun, ev.EvidenceImported)):
         raise InputError.of("first event of a session", event.kind, "session_begun")
     rule = _RULES.get(type(event))
     return rule(state, event) if rule else state
+
+
+def _imported(state: State, event: ev.EvidenceImported) -> State:
+    if state.config is not None:
+        raise InputError("evidence_imported came after session_begun, must come before it")
+    return replace(state, imported=(*state.imported, event))
 
 
 def _begun(state: State, event: ev.SessionBegun) -> State:
@@ -29,9 +37,13 @@ def _begun(state: State, event: ev.SessionBegun) -> State:
         raise InputError("session_begun came twice, must come once")
     champion, config = InService(event.champion_id, event.champion), event.config
     first = config.lead_in[0] if config.lead_in else config
+    recorded = () if config.lead_in else imported.usable(state.imported, config, event.about)
     return replace(
         state,
         config=config,
+        imported=recorded,
+        times=Times(recorded_s=imported.mean_time(recorded)),
+        champion_costs=Tally(*imported.costs_of(recorded, event.champion)),
         stage=Stage(grade=first.grade, time_limit=first.time_limit),
         prior=event.prior,
         initial=champion,
@@ -184,6 +196,7 @@ def _spent(state: State, event: ev.FloorTimeUsed) -> State:
 
 
 _RULES: dict[type, Callable[[State, Any], State]] = {
+    ev.EvidenceImported: _imported,
     ev.SessionBegun: _begun,
     ev.BatchOpened: _opened,
     ev.EpisodeScored: _scored,

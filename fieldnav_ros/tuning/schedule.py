@@ -20,6 +20,7 @@ class Times:
     episodes: int = 0
     episode_s: float = 0.0
     reset_s: float = 0.0
+    recorded_s: float | None = None  # mean of earlier recordings, which then is the guess
 
     def after(self, episode_s: float, floor_time_s: float) -> Times:
         """Return the times with one more episode; what its floor time holds beyond it is the reset."""
@@ -34,7 +35,7 @@ class Times:
         """Return the expected episode and reset (s): a mean of the guesses and of what was seen."""
         weight = GUESS_WEIGHT + self.episodes
         return (
-            (GUESS_WEIGHT * config.episode_guess_s + self.episode_s) / weight,
+            (GUESS_WEIGHT * (self.recorded_s or config.episode_guess_s) + self.episode_s) / weight,
             (GUESS_WEIGHT * config.reset_guess_s + self.reset_s) / weight,
         )
 

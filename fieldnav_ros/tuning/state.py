@@ -142,6 +142,7 @@ class State:
     """Everything decisions are made from. Counters, clocks and tallies of time are never taken back."""
 
     config: ev.SessionConfig | None = None
+    imported: tuple[ev.EvidenceImported, ...] = ()  # recordings of earlier episodes that this session can use
     prior: Prior | None = None  # where the search of this stage starts
     initial: InService = NO_SET
     champion: InService = NO_SET

@@ -74,4 +74,4 @@ def test_a_configuration_out_of_bounds_is_refused(key: str, value: float) -> Non
 
 
 def test_the_schema_names_every_kind_of_event() -> None:
-    assert len(event_schema()["discriminator"]["mapping"]) == 18
+    assert len(event_schema()["discriminator"]["mapping"]) == 19
