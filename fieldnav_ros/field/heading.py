@@ -26,6 +26,10 @@ WAITED = 4.0
 """How much more the course stays for each second waited."""
 PATIENCE = 2.0
 """Longest time waited (s) that counts."""
+SOON = 0.5
+"""Time waited (s) after which ways past are looked for further to the sides: two carts may leave no gap."""
+WIDER = 1.0
+"""How much further for each second after that, as a share of the step."""
 STANDS = 0.15
 """Mean wheel speed (m/s) below which the robot counts as waiting."""
 
@@ -96,12 +100,12 @@ def guidance_course(
     thin = Numbers(*np.array(numbers, np.float32))
     zones = Zones.of(robots, obstacles, thin, robot, floor)
     tried = len(_PACES) if len(wanted) <= _FEW else 1
-    ahead = look_ahead(robots, _courses(course, robots, numbers, slice(tried)), zones, thin, robot)
+    ahead = look_ahead(robots, _courses(course, robots, numbers, slice(tried), habit.waited), zones, thin, robot)
     rows = np.flatnonzero(ahead.crowding[0] + ahead.touching[0] > 0.0)
     if rows.size:
         ahead = Ahead(*(part[:, rows] for part in ahead))
         some, numbers = robots.take(rows), _take(numbers, rows)
-        courses = _courses(Course(*(part[rows] for part in course)), some, numbers, slice(None))
+        courses = _courses(Course(*(part[rows] for part in course)), some, numbers, slice(None), habit.waited[rows])
         if tried == 1:
             rest = Course(*(part[1:] for part in courses))
             more = look_ahead(some, rest, zones.take(rows), _take(thin, rows), robot)
@@ -117,12 +121,13 @@ def _take(numbers: Numbers, rows: Any) -> Numbers:
     return Numbers(*(part[rows] if np.ndim(part) else part for part in numbers))
 
 
-def _courses(wanted: Course, robots: Robots, numbers: Numbers, which: slice) -> Course:
-    """Return the courses to compare (C, N), the wanted one first."""
+def _courses(wanted: Course, robots: Robots, numbers: Numbers, which: slice, waited: Any) -> Course:
+    """Return the courses to compare (C, N), the wanted one first; who has waited long looks further to the sides."""
     if which == slice(1):
         return Course(wanted.facing[None], wanted.bend[None], 1.0, wanted.distance[None])
     facing = np.empty((len(_PACES), len(wanted.facing)))
-    facing[: len(_STEPS)] = wanted.facing + numbers.sidestep * _STEPS
+    wider = numbers.sidestep * (1.0 + WIDER * np.maximum(waited - SOON, 0.0))
+    facing[: len(_STEPS)] = wanted.facing + wider * _STEPS
     facing[len(_STEPS) :] = robots.yaw
     bend = np.zeros_like(facing)
     bend[0] = wanted.bend

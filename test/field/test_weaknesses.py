@@ -30,6 +30,10 @@ TIGHT = ParameterSet(
     turn_radius=0.054, turn_softness=0.047, motion_lead=0.17, guard_distance=0.098, guard_fade=0.041, sidestep=0.37,
     steer_gain=6.75, arrival_gain=10.0, lateral_accel=2.2,
 )  # fmt: skip
+SHORT_SIGHTED = ParameterSet(
+    turn_radius=0.071, turn_softness=0.084, motion_lead=0.31, guard_distance=0.089, guard_fade=0.02, sidestep=0.26,
+    steer_gain=8.1, arrival_gain=37.0, lateral_accel=6.9,
+)  # fmt: skip
 AHEAD = 0.30
 """Look-ahead (s) of the default field here: the published composition uses the same number otherwise."""
 
@@ -121,6 +125,22 @@ def test_pocket() -> None:
     where = layout((0.4, 0.8, 0.0), (2.0, 0.8, 0.0), (1.2, 0.8), (1.1, 0.94), (1.1, 0.66))
     assert ride(where, WIDE, "published").kind is not OutcomeKind.ARRIVED
     assert ride(where, same(WIDE), "foresight").kind is OutcomeKind.ARRIVED
+
+
+@pytest.mark.parametrize(
+    ("start", "goal", "carts"),
+    [
+        ((0.65, 0.63, -1.17), (1.81, 1.05, 2.51), [(1.21, 0.80), (1.23, 0.55)]),
+        ((0.18, 0.92, 0.21), (1.72, 0.80, 2.92), [(1.48, 0.84), (1.40, 0.60)]),
+        ((0.75, 1.31, -1.82), (1.84, 1.05, -0.34), [(1.41, 1.19), (1.35, 0.94)]),
+    ],
+)
+def test_a_gap_that_is_too_narrow_is_driven_round(
+    start: tuple[float, ...], goal: tuple[float, ...], carts: list[tuple[float, ...]]
+) -> None:
+    """With small steps to the side nothing better than the gap is seen, until the robot has waited for a while."""
+    where = layout(start, goal, *carts)  # type: ignore[arg-type]  # three numbers each
+    assert ride(where, SHORT_SIGHTED, "foresight").kind is OutcomeKind.ARRIVED
 
 
 def wall_contacts(layouts: list[Layout], numbers: ParameterSet, model: str) -> int:
