@@ -75,6 +75,7 @@ class FieldnavNode(Node):
             raise
         self.counts: Counter[str] = Counter()
         self._said: dict[str, float] = {}
+        self._warned: dict[str, tuple[float, str]] = {}
         self._level: bytes = OK
         self._summary = "started"
         self._diagnostics = self.create_publisher(DiagnosticArray, "/diagnostics", 10)
@@ -92,9 +93,15 @@ class FieldnavNode(Node):
         """Count a fault and log it in plain words, at most once in QUIET_TIME for each kind."""
         self.counts[kind] += 1
         now = time.monotonic()
+        self._warned[kind] = now, sentence
         if now - self._said.get(kind, -QUIET_TIME) >= QUIET_TIME:
             self._said[kind] = now
             self.log.warning(sentence)
+
+    def recent_warnings(self, seconds: float) -> tuple[str, ...]:
+        """Return the newest warning of each kind that came within the last ``seconds``, newest first."""
+        since = time.monotonic() - seconds
+        return tuple(sentence for when, sentence in sorted(self._warned.values(), reverse=True) if when >= since)
 
     def decoded(self, decode: Callable[[str], Decoded], message: String) -> Decoded | None:
         """Return the payload of a message; a malformed one is counted, warned about and None."""
