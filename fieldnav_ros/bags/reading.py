@@ -109,17 +109,18 @@ def _opened(path: Path) -> BufferedReader:
 
 
 class _Bounded:
-    """A file whose reads ask for no more than is there: a stated length reserves nothing."""
+    """A file that ends where less is left than is asked for: a stated length reserves nothing."""
 
-    def __init__(self, file: BufferedReader) -> None:
-        self._file = file
+    def __init__(self, file: BufferedReader, end: type[Exception]) -> None:
+        self._file, self._end = file, end
         self._left = file.seek(0, 2)
         file.seek(0)
 
     def read(self, length: int) -> bytes:
-        data = self._file.read(max(0, min(length, self._left)))
-        self._left -= len(data)
-        return data
+        if length > self._left:
+            raise self._end
+        self._left -= length
+        return self._file.read(length)
 
 
 class _Reader:
@@ -137,7 +138,8 @@ class _Reader:
         from mcap.records import Chunk, DataEnd, Header
         from mcap.stream_reader import StreamReader, breakup_chunk
 
-        records = iter(StreamReader(_Bounded(file), emit_chunks=True, record_size_limit=LARGEST_RECORD).records)  # type: ignore[arg-type]  # it only reads
+        stream: Any = _Bounded(file, EndOfFile)
+        records = iter(StreamReader(stream, emit_chunks=True, record_size_limit=LARGEST_RECORD).records)
         for record in _up_to_the_cut(records, EndOfFile):
             if isinstance(record, DataEnd):
                 return True
