@@ -33,8 +33,12 @@ def _demo(arguments: argparse.Namespace) -> Summary:
 
 
 def _report(arguments: argparse.Namespace) -> Summary:
-    summary = report.run(arguments)
+    from fieldnav_ros.nodes.payloads import decode_request
+
+    summary = report.run(arguments, decode_request)
     print(summary["page"])
+    for sentence in summary.get("unreadable_bags", []):
+        print(f"fieldnav: {sentence}", file=sys.stderr)
     return summary
 
 

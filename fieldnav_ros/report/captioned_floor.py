@@ -24,12 +24,16 @@ def failure_picture(ground: Ground, scene: FailureScene) -> Picture | None:
         " failures are shown. ",
     ]
     if known:
-        how = "as measured" if scene.measured and not scene.repeated else "as the simulator repeats them"
+        how: Sentence = ["as the simulator repeats them"]
+        if scene.measured == known:
+            how = ["as measured"]
+        elif scene.measured:
+            how = [whole("failures_measured", scene.measured), " as measured, the others as the simulator repeats them"]
         caption += [
             "For ",
             whole("failures_with_track", known),
             " of them the track is known (",
-            how,
+            *how,
             "): grey from the start, the mark is where it ended. Look for marks that crowd at a wall or before a goal.",
         ]
     else:

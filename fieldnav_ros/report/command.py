@@ -1,4 +1,4 @@
-"""``fieldnav report LEDGER --out HTML [--compare LEDGER ...]``: the verb, and the call that makes a page."""
+"""``fieldnav report LEDGER --out HTML [--bags FOLDER] [--compare LEDGER ...]``: the verb, and what makes a page."""
 
 from __future__ import annotations
 
@@ -13,6 +13,8 @@ from typing import TYPE_CHECKING, Any
 from fieldnav_ros.errors import InputError, WorkError
 
 if TYPE_CHECKING:
+    from fieldnav_ros.bags.scoring import Decode
+    from fieldnav_ros.report.measured import Measured
     from fieldnav_ros.report.record import Record
     from fieldnav_ros.report.scenes import Tracks
 
@@ -26,11 +28,14 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
         "--compare", type=Path, nargs="+", default=[], metavar="LEDGER", help="other sessions to set beside it"
     )
+    parser.add_argument("--bags", type=Path, metavar="FOLDER", help="bags of the session, whose tracks are drawn")
 
 
-def run(arguments: argparse.Namespace) -> dict[str, Any]:
-    """Write the page and return what a machine wants to know of it."""
-    record = write_report(arguments.ledger, arguments.out, arguments.compare)
+def run(arguments: argparse.Namespace, decode: Decode) -> dict[str, Any]:
+    """Write the page and return what a machine wants to know of it; ``decode`` reads the requests in bags."""
+    measured = _measured(arguments, decode)
+    tracks = measured.tracks if measured else None
+    record = write_report(arguments.ledger, arguments.out, arguments.compare, tracks)
     found, last = record.facts, record.facts.rounds[-1] if record.facts.rounds else None
     return {
         "ok": True,
@@ -41,7 +46,18 @@ def run(arguments: argparse.Namespace) -> dict[str, Any]:
         "episodes": len(found.episodes),
         "voids": len(found.voids),
         "ledger_hash": record.origin.head,
+        **({"tracks": len(measured.tracks), "unreadable_bags": measured.unreadable} if measured else {}),
     }
+
+
+def _measured(arguments: argparse.Namespace, decode: Decode) -> Measured | None:
+    if arguments.bags is None:
+        return None
+    _check_extra()
+    check_place(arguments.out)
+    from fieldnav_ros.report.measured import measured_tracks
+
+    return measured_tracks(arguments.ledger, arguments.bags, decode)
 
 
 def write_report(
@@ -53,9 +69,7 @@ def write_report(
     would go over one; WorkError where the page cannot be written or the extra ``report`` is not installed.
     """
     ledger, out = Path(ledger_path), Path(out_path)
-    for module in ("matplotlib", "jinja2"):
-        if find_spec(module) is None:
-            raise WorkError(f"{module} is not installed; install fieldnav_ros with its extra 'report'")
+    _check_extra()
     check_place(out)
     from fieldnav_ros.report.page import render  # takes a second to import, which other verbs need not wait for
     from fieldnav_ros.report.record import read_record
@@ -63,6 +77,12 @@ def write_report(
     record, *others = [read_record(path) for path in (ledger, *map(Path, compare))]
     _write(out, render(record, others, tracks))
     return record
+
+
+def _check_extra() -> None:
+    for module in ("matplotlib", "jinja2"):
+        if find_spec(module) is None:
+            raise WorkError(f"{module} is not installed; install fieldnav_ros with its extra 'report'")
 
 
 def check_place(out: Path) -> None:

@@ -125,7 +125,7 @@ def field_scene(facts: Facts, ground: Ground, tracks: Tracks) -> FieldScene | No
         shown.append(other)
     verdict = [item for item in facts.episodes if item.phase == "verdict"]
     last = [item for item in verdict if facts.rounds and item.set.id == facts.rounds[-1].challenger.id]
-    shown_on = (last or verdict or list(facts.episodes))[0]
+    shown_on = _best_measured(last or verdict or list(facts.episodes), facts, shown, tracks)
     layout = shown_on.layout
     seen = [item.layout for item in (verdict or facts.episodes)]
     around = _other_starts(ground.yard, layout, seen)
@@ -137,6 +137,14 @@ def field_scene(facts: Facts, ground: Ground, tracks: Tracks) -> FieldScene | No
         runs = ground.run([layout, *around], [chosen] * count, [shown_on.time_limit] * count)
         views.append(View(chosen, real or runs[0], tuple(runs[1:]), real is not None))
     return FieldScene(layout, tuple(views), bool(verdict))
+
+
+def _best_measured(
+    candidates: Sequence[Episode], facts: Facts, shown: Sequence[NamedValues], tracks: Tracks
+) -> Episode:
+    """Return the first candidate with the most of the sets measured on its layout."""
+    measured = {(item.layout, item.set.id) for item in facts.episodes if item.id in tracks}
+    return max(candidates, key=lambda item: sum((item.layout, chosen.id) in measured for chosen in shown))
 
 
 def _other_starts(yard: Yard, layout: Layout, seen: Sequence[Layout]) -> list[Layout]:
