@@ -10,6 +10,7 @@ import numpy as np
 
 from fieldnav_ros.guide import DEFAULT_MODEL
 from fieldnav_ros.model import Layout, Outcome, OutcomeKind
+from fieldnav_ros.parameters import DEFAULTS, ParameterSet
 from fieldnav_ros.resources import config_path
 from fieldnav_ros.tuning.events import About, Episode, Event, PairCompared, SessionConfig, VerdictReached
 from fieldnav_ros.tuning.ledger import Ledger
@@ -85,12 +86,14 @@ def keep(session: Session, log: list[Event], events: Iterable[Event]) -> None:
         session.apply(event)
 
 
-def begun(config: SessionConfig, about: About | None = None) -> tuple[Session, list[Event]]:
+def begun(
+    config: SessionConfig, about: About | None = None, champion: ParameterSet = DEFAULTS
+) -> tuple[Session, list[Event]]:
     """Return a session that has begun on the parcel yard, and its events."""
     yard = parcel_yard()
     session, log = session_of(yard), list[Event]()
     known = about or About(software="fieldnav_ros test", model=DEFAULT_MODEL, yard=yard, place="test bench")
-    keep(session, log, session.begin(config, about=known))
+    keep(session, log, session.begin(config, champion, about=known))
     return session, log
 
 
@@ -110,8 +113,12 @@ def small(seed: int = 1, minutes: float = 8.0, **told: Any) -> SessionConfig:
     return SessionConfig.model_validate({"seed": seed, "floor_time_s": 60.0 * minutes, "grade": "moving", **numbers})
 
 
+HASTY = DEFAULTS.model_copy(update={"motion_lead": 0.02, "guard_distance": 0.08, "guard_fade": 0.01})
+"""A set that hits carts, so that there are failures to show."""
+
+
 def by_simulation() -> list[Event]:
-    session, log = begun(small(minutes=6.0, pairs_at_once=16, rounds=1))
+    session, log = begun(small(minutes=6.0, pairs_at_once=16, rounds=1), champion=HASTY)
     return drive(session, log, simulated(parcel_yard(), "moving"))
 
 
