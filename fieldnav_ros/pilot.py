@@ -26,6 +26,8 @@ JUMP_SLACK_YAW = 0.5
 """The same for yaw, in rad."""
 LOCKSTEP_PAUSE = 0.9
 """Seconds between two stamps of a lockstep simulation that mean another episode."""
+COASTED = 1.3
+"""Multiple of the arrival tolerance within which a robot that must stand at its goal may come to rest."""
 OVERDUE = 2.0
 """Seconds past an episode's time limit after which guidance gives it up by itself."""
 
@@ -100,7 +102,7 @@ class Pilot:
     def start_episode(self, episode: str, goal: Pose, time_limit: float, stay: bool = False) -> None:
         """Take the episode's goal and forget everything from before; ``time_limit`` in s.
 
-        ``stay``: stand where the goal is reached, as outside episodes; else who judges says when it is over.
+        ``stay``: stand at the goal, and try again after rolling past it; else who judges says when it is over.
         """
         self.episode, self.goal, self._time_limit, self._stay = episode, goal, time_limit, stay
         self._arrived, self._episode_start = False, None
@@ -241,9 +243,13 @@ class Pilot:
         return None
 
     def _arrival(self, reading: Reading, goal: Pose) -> Halt | None:
-        near = math.hypot(reading.x - goal.x, reading.y - goal.y) <= self.rules.arrival.position
-        if near and abs(float(wrap(reading.yaw - goal.yaw))) <= self.rules.arrival.heading:
+        allowed = self.rules.arrival
+        far = math.hypot(reading.x - goal.x, reading.y - goal.y) / allowed.position
+        turned = abs(float(wrap(reading.yaw - goal.yaw))) / allowed.heading
+        if max(far, turned) <= 1.0:
             self._arrived = True
+        elif self._stay and max(far, turned) > COASTED:
+            self._arrived = False  # it rolled on after the stop: once more
         return Halt("arrived", "arrived, waiting for the next goal", fault=False) if self._arrived else None
 
     def _overdue(self, reading: Reading) -> Halt | None:
