@@ -41,6 +41,7 @@ class Collector:
         self.spent: list[ev.FloorTimeUsed] = []
         self.ignored: list[ev.ReportIgnored] = []
         self.notes: list[ev.Noted] = []
+        self.imported: list[ev.EvidenceImported] = []
         self.live: list[tuple[ev.Event, float]] = []
         self.taken_back = 0
         self._since_scored = 0
@@ -63,6 +64,8 @@ class Collector:
             self.ignored.append(event)
         elif isinstance(event, ev.Noted):
             self.notes.append(event)
+        elif isinstance(event, ev.EvidenceImported):
+            self.imported.append(event)
         elif isinstance(event, DECISIONS):
             self._decide(event)
 

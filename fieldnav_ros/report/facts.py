@@ -131,6 +131,16 @@ class Spending:
 
 
 @dataclass(frozen=True)
+class Recordings:
+    """Recorded episodes of earlier sessions in this record: how many, of how many sets, how many of use to it."""
+
+    sources: tuple[str, ...] = ()
+    sets: int = 0
+    episodes: int = 0
+    used: int = 0
+
+
+@dataclass(frozen=True)
 class Facts:
     """Everything that the page says about one session. Without ``begun`` all else is empty."""
 
@@ -148,6 +158,7 @@ class Facts:
     open_episodes: int
     taken_back: int
     ended: str | None
+    recordings: Recordings = Recordings()
 
     @property
     def config(self) -> ev.SessionConfig | None:

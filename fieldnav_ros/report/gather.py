@@ -5,7 +5,17 @@ from __future__ import annotations
 from collections.abc import Iterable
 
 from fieldnav_ros.report.collect import Collector, Place
-from fieldnav_ros.report.facts import Episode, Facts, Generation, NamedValues, Pair, Round, Spending, Void
+from fieldnav_ros.report.facts import (
+    Episode,
+    Facts,
+    Generation,
+    NamedValues,
+    Pair,
+    Recordings,
+    Round,
+    Spending,
+    Void,
+)
 from fieldnav_ros.tuning import events as ev
 from fieldnav_ros.tuning.schedule import Times, make_plan
 
@@ -29,12 +39,22 @@ def facts(events: Iterable[ev.Event]) -> Facts:
         rounds=_rounds(seen, begun),
         generations=_generations(seen, episodes),
         spending=_spending(seen, episodes),
-        plan=make_plan(config, Times(), 0.0, config.floor_time_s, in_verdict=False),
+        plan=make_plan(config, Times(recorded_s=state.times.recorded_s), 0.0, config.floor_time_s, in_verdict=False),
         ignored=tuple(seen.ignored),
         notes=tuple(seen.notes),
         open_episodes=0 if state.ended is not None else seen.open_episodes(),
         taken_back=seen.taken_back,
         ended=state.ended,
+        recordings=_recordings(seen),
+    )
+
+
+def _recordings(seen: Collector) -> Recordings:
+    return Recordings(
+        sources=tuple(dict.fromkeys(item.source for item in seen.imported)),
+        sets=len({item.parameters for item in seen.imported}),
+        episodes=sum(len(item.episodes) for item in seen.imported),
+        used=sum(len(item.episodes) for item in seen.session.state.imported),
     )
 
 

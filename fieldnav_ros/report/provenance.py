@@ -104,9 +104,22 @@ def _session(facts: Facts) -> list[tuple[str, Rows]]:
             if begun.prior
             else ["none"],
         ),
+        ("earlier recordings", _recordings(facts)),
         ("ended", [Name(facts.ended)] if facts.ended is not None else ["not in this record"]),
     ]
     return [("Session", rows)]
+
+
+def _recordings(facts: Facts) -> Sentence:
+    found = facts.recordings
+    if not found.episodes:
+        return ["none"]
+    names: Sentence = [part for name in found.sources for part in (", ", Name(name))]
+    return [
+        whole("recordings.episodes", found.episodes), " episodes of ", whole("recordings.sets", found.sets),
+        " sets, from ", *names[1:], "; ", whole("recordings.used", found.used),
+        " under this session's conditions, for its plan and the start of its search; no verdict rests on them",
+    ]  # fmt: skip
 
 
 def _lead_in(config: SessionConfig) -> Sentence:

@@ -84,9 +84,29 @@ class Truth:
         for row in TABLE:
             result[f"table.{row.name}.low"], result[f"table.{row.name}.high"] = row.low, row.high
         if begun:
+            result |= self._recordings(begun[0])
             result |= self._sets(begun[0]) | self._rounds() | self._time(begun[0]) | self._told(begun[0])
             result |= self._narrowed() | self._drift(begun[0])
         return result
+
+    RECORDED = (
+        "SELECT json_extract(payload, '$.parameters') AS numbers, json_extract(payload, '$.grade') AS grade,"
+        " json_extract(payload, '$.time_limit') AS time_limit, json_extract(payload, '$.model') AS model,"
+        " json_extract(one.value, '$.outcome.time') AS time"
+        " FROM events, json_each(payload, '$.episodes') AS one WHERE kind = 'evidence_imported'"
+    )
+
+    def _conditions(self, begun: Any) -> tuple[Any, ...]:
+        told = begun["config"]
+        return told["grade"], told["time_limit"], (begun.get("about") or {}).get("model", "")
+
+    def _recordings(self, begun: Any) -> dict[str, float]:
+        same = f"({self.RECORDED}) WHERE (grade, time_limit, model) = (?, ?, ?)"
+        return {
+            "recordings.episodes": self.one(f"SELECT COUNT(*) FROM ({self.RECORDED})"),
+            "recordings.sets": self.one(f"SELECT COUNT(DISTINCT numbers) FROM ({self.RECORDED})"),
+            "recordings.used": self.one(f"SELECT COUNT(*) FROM {same}", *self._conditions(begun)),
+        }
 
     def _counts(self) -> dict[str, float]:
         result = {"episodes": self.one("SELECT COUNT(*) FROM counted"), "voids": self.one("SELECT COUNT(*) FROM void")}
@@ -184,7 +204,9 @@ class Truth:
         )
         other = self.one("SELECT TOTAL(json_extract(payload, '$.seconds')) FROM events WHERE kind = 'floor_time_used'")
         total = used["search"] + used["verdict"] + void + other
-        step = told["episode_guess_s"] + told["reset_guess_s"]
+        query = f"SELECT AVG(time) FROM ({self.RECORDED}) WHERE (grade, time_limit, model) = (?, ?, ?)"
+        recorded = self.one(query, *self._conditions(begun))
+        step = (recorded or told["episode_guess_s"]) + told["reset_guess_s"]
         given = told["floor_time_s"]
         reserve = max(told["verdict_share"] * given, 2 * told["least_pairs"] * step)
         search, budget = int(max(given - reserve, 0.0) / step), int(given / step)

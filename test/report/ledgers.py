@@ -12,7 +12,16 @@ from fieldnav_ros.guide import DEFAULT_MODEL
 from fieldnav_ros.model import Layout, Outcome, OutcomeKind
 from fieldnav_ros.parameters import DEFAULTS, ParameterSet
 from fieldnav_ros.resources import config_path
-from fieldnav_ros.tuning.events import About, Episode, Event, PairCompared, SessionConfig, VerdictReached
+from fieldnav_ros.tuning.events import (
+    About,
+    Episode,
+    Event,
+    EvidenceImported,
+    PairCompared,
+    RecordedEpisode,
+    SessionConfig,
+    VerdictReached,
+)
 from fieldnav_ros.tuning.ledger import Ledger
 from fieldnav_ros.tuning.session import Report, Session
 from fieldnav_ros.world import batch, layouts
@@ -238,6 +247,26 @@ def hostile() -> list[Event]:
     return log
 
 
+def with_recordings() -> list[Event]:
+    """Return a session that began with recordings of three sets, one of them on another grade."""
+    yard = parcel_yard()
+    session, log = session_of(yard), list[Event]()
+    for number, grade in enumerate(("moving", "moving", "empty")):
+        parameters = DEFAULTS.model_copy(update={"steer_gain": 5.0 + number})
+        episodes = tuple(
+            RecordedEpisode(bag=f"{n}.a.1", outcome=Outcome(kind=OutcomeKind.ARRIVED, time=4.5 + n), cost=4.5 + n)
+            for n in range(3 + number)
+        )
+        event = EvidenceImported(
+            source="home.ledger", model=DEFAULT_MODEL, grade=grade, time_limit=10.0, set_id=f"s{number}",
+            parameters=parameters, episodes=episodes,
+        )  # fmt: skip
+        keep(session, log, [event])
+    about = About(software="fieldnav_ros test", model=DEFAULT_MODEL, yard=yard, place="test bench")
+    keep(session, log, session.begin(small(seed=12), about=about))
+    return drive(session, log, made_up(), at_most=1)
+
+
 ZOO: dict[str, Callable[[], list[Event]]] = {
     "empty": list,
     "only_begun": only_begun,
@@ -254,5 +283,6 @@ ZOO: dict[str, Callable[[], list[Event]]] = {
     "curriculum": curriculum,
     "huge_evidence": huge_evidence,
     "hostile": hostile,
+    "with_recordings": with_recordings,
     "by_simulation": by_simulation,
 }
