@@ -54,6 +54,19 @@ def _rescore(arguments: argparse.Namespace) -> Summary:
     return bags.run(arguments, decode_request, print)
 
 
+def _pit(arguments: argparse.Namespace) -> Summary:
+    from fieldnav_ros.nodes.pit import command  # rclpy and rich are needed by these verbs alone
+
+    return command.run(arguments.namespace, arguments.tuner, arguments.watch)
+
+
+def _rehearse(arguments: argparse.Namespace) -> Summary:
+    from fieldnav_ros.nodes.rehearse import Rehearsal, run_rehearsal
+
+    names = ("floor_time", "speed", "seed", "outcomes", "starts", "record")
+    return run_rehearsal(Rehearsal(arguments.out, **{name: getattr(arguments, name) for name in names}))
+
+
 def build_parser() -> argparse.ArgumentParser:
     """Return the parser of all verbs."""
     parser = _Parser(prog="fieldnav", description="Retune a robot's heading-field guidance.", epilog=SAFETY)
@@ -68,11 +81,33 @@ def build_parser() -> argparse.ArgumentParser:
     demo.add_argument(
         "--seed", type=number("--seed", 0, 2**31, int), default=1, help="seed of the session (default: %(default)s)"
     )
+    pit = _verb(verbs, "pit", _pit, "the operator's terminal beside the floor")
+    pit.add_argument("--namespace", default="", metavar="NS", help="namespace of the nodes (default: none)")
+    pit.add_argument("--tuner", default="tuner_node", metavar="NAME", help="name of the tuner (default: %(default)s)")
+    pit.add_argument("--watch", action="store_true", help="only look: no key but q does anything")
+    _rehearse_arguments(_verb(verbs, "rehearse", _rehearse, "a session at home, on a simulated floor"))
     prepare.add_arguments(_verb(verbs, "pretune", prepare.run, "tune in simulation; writes a prior for the site"))
     survey_command.add_arguments(_verb(verbs, "survey", _survey, "the field as a picture, with its faults marked"))
     report.add_arguments(_verb(verbs, "report", _report, "one page with pictures from a session's ledger"))
     bags.add_arguments(_verb(verbs, "rescore", _rescore, "outcomes again from bags, beside those of the ledger"))
     return parser
+
+
+def _rehearse_arguments(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument(
+        "--out", type=Path, default=Path("rehearsal"), metavar="DIR", help="folder for the files (default: %(default)s)"
+    )
+    parser.add_argument(
+        "--floor-time", type=number("--floor-time", 0.5, 600), default=12.0, metavar="MIN",
+        help="simulated minutes of floor time (default: %(default)g)",
+    )  # fmt: skip
+    parser.add_argument(
+        "--speed", type=number("--speed", 0.1, 10), default=1.0, help="multiple of real time (default: %(default)g)"
+    )
+    parser.add_argument("--seed", type=number("--seed", 0, 2**31, int), default=1, help="default: %(default)s")
+    parser.add_argument("--outcomes", choices=("judge", "operator"), default="judge", help="whose outcomes count")
+    parser.add_argument("--starts", choices=("region", "marks"), default="region", help="where episodes start")
+    parser.add_argument("--record", action="store_true", help="one bag for each episode")
 
 
 class _Parser(argparse.ArgumentParser):

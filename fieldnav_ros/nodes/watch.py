@@ -9,6 +9,7 @@ import rclpy
 from rclpy.context import Context
 from rclpy.executors import SingleThreadedExecutor
 from rclpy.signals import SignalHandlerOptions
+from rclpy.task import Future
 from std_msgs.msg import String
 from std_srvs.srv import Trigger
 
@@ -20,10 +21,10 @@ from fieldnav_ros.nodes.payloads import TunerStatus, decode_status
 class Watch:
     """A node that listens to ``tuner/status`` and calls the tuner's services; spin it from one thread."""
 
-    def __init__(self, context: Context, tuner: str = "tuner_node") -> None:
+    def __init__(self, context: Context, tuner: str = "tuner_node", namespace: str = "") -> None:
         rclpy.init(args=[], context=context, signal_handler_options=SignalHandlerOptions.NO)
         self._context, self._tuner = context, tuner
-        self._node = rclpy.create_node("fieldnav_watch", context=context)
+        self._node = rclpy.create_node("fieldnav_watch", context=context, namespace=namespace or None)
         self._executor = SingleThreadedExecutor(context=context)
         self._executor.add_node(self._node)
         self._node.create_subscription(String, "tuner/status", self._on_status, LATCHED)
@@ -44,13 +45,17 @@ class Watch:
 
     def call(self, service: str, seconds: float = 2.0) -> str | None:
         """Call a service of the tuner; its message where it succeeded, None where it refused or was late."""
-        client = self._services[service]
-        if not client.wait_for_service(timeout_sec=seconds):
+        if not self._services[service].wait_for_service(timeout_sec=seconds):
             return None
-        future = client.call_async(Trigger.Request())
+        future = self._services[service].call_async(Trigger.Request())
         self._executor.spin_until_future_complete(future, timeout_sec=seconds)
         answer: Any = future.result() if future.done() else None
         return str(answer.message) if answer is not None and answer.success else None
+
+    def ask(self, service: str) -> Future | None:
+        """Call a service without waiting for its answer; None where nobody offers it."""
+        client = self._services[service]
+        return client.call_async(Trigger.Request()) if client.service_is_ready() else None
 
     def close(self) -> None:
         """Leave the graph."""

@@ -1,0 +1,1 @@
+"""The terminal beside the floor: ``fieldnav pit``."""

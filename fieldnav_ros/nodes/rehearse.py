@@ -1,0 +1,76 @@
+"""A rehearsal at home: real nodes against a stand-in for hardware, and the operator's terminal on top."""
+
+from __future__ import annotations
+
+import os
+import time
+from pathlib import Path
+from typing import Any, NamedTuple
+
+from fieldnav_ros.errors import InputError
+from fieldnav_ros.nodes.domain import Domain
+from fieldnav_ros.nodes.pit import command as pit
+from fieldnav_ros.nodes.processes import Processes
+from fieldnav_ros.resources import config_path
+
+NODES = ("simulator_node", "judge_node", "guidance_node", "tuner_node")
+
+
+class Rehearsal(NamedTuple):
+    """What a rehearsal is made of; ``floor_time`` in simulated min, ``speed`` in multiples of real time."""
+
+    folder: Path
+    floor_time: float = 12.0
+    speed: float = 1.0
+    seed: int = 1
+    grade: str = "moving"
+    outcomes: str = "judge"
+    starts: str = "region"
+    record: bool = False
+
+    @property
+    def ledger(self) -> Path:
+        """The session's record."""
+        return self.folder / "session.ledger"
+
+    def parameters(self, node: str) -> dict[str, object]:
+        """Return what a node needs on top of its own file and config/rehearsal.yaml."""
+        if node == "simulator_node":
+            floor = config_path("yards/rehearsal_floor.yaml")
+            return {"yard": floor, "speed": self.speed, "seed": self.seed, "grade": self.grade}
+        if node == "tuner_node":
+            return {
+                "ledger": self.ledger, "champion_file": self.folder / "champion.yaml", "floor_time": self.floor_time,
+                "seed": self.seed, "grade": self.grade, "outcomes": self.outcomes,
+                "starts": self.starts, "place": "rehearsal, a simulated floor",
+            }  # fmt: skip
+        return {"bags": self.folder / "bags", "reliable": True} if node == "recorder_node" else {}
+
+    def start(self, processes: Processes) -> None:
+        """Start the nodes."""
+        for node in (*NODES, *(["recorder_node"] if self.record else [])):
+            start_node(processes, node, self.parameters(node))
+
+
+def start_node(processes: Processes, node: str, parameters: dict[str, object]) -> None:
+    """Start one node of a rehearsal with its files and these parameters."""
+    files = [config_path(f"{node.removesuffix('_node')}.yaml"), config_path("rehearsal.yaml")]
+    processes.start(node, parameters, files)
+
+
+def run_rehearsal(rehearsal: Rehearsal) -> dict[str, Any]:
+    """Run nodes and terminal until the terminal is left; return the summary. Raises WorkError where a node dies."""
+    try:
+        rehearsal.folder.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        raise InputError(f"{rehearsal.folder}: cannot be made: {error.strerror}") from error
+    domain = Domain()
+    environment = domain.environment()
+    os.environ.update(environment)
+    print(f"Nodes start; for another terminal: ROS_DOMAIN_ID={domain.number} fieldnav pit --watch")
+    began = time.monotonic()
+    with Processes(environment) as processes:
+        rehearsal.start(processes)
+        summary = pit.run("", "tuner_node", watch_only=False, check=processes.check)
+    seconds = round(time.monotonic() - began, 1)
+    return {**summary, "ledger": str(rehearsal.ledger), "seconds": seconds, "seed": rehearsal.seed}
