@@ -52,7 +52,7 @@ def run(rate: float, seconds: float, name: str, bags: Path) -> dict[str, float]:
         request = make(String, "episode/request", LATCHED)
         moving: list[tuple[Any, Any]] = [
             (make(PoseStamped, "pose", SENSOR), lambda n: pose_message(0.1, 0.2, 0.3, "map", n)),
-            (make(PoseArray, "obstacles", SENSOR), lambda n: obstacles_message(*CARTS, "map", n)),
+            (make(PoseArray, "obstacles", SENSOR), lambda n: obstacles_message(CARTS[0], CARTS[1], CARTS[2], "map", n)),
             (make(PoseStamped, "heading", RELIABLE), lambda n: pose_message(0.1, 0.2, 0.3, "map", n)),
             (make(TwistStamped, "cmd_vel", RELIABLE), lambda n: command_message(0.5, 0.1, "base_link", n, True)),
         ]
