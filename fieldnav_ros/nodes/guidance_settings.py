@@ -42,7 +42,7 @@ SETTINGS: tuple[Setting, ...] = (
     Setting("arrival.heading", 0.0, f"heading error in rad that counts as arrived; {SAME}", 0.0, 3.15),
     MATCH_STAMPS,
     RELIABLE_INPUT,
-    Setting("field_rate", 5.0, "pictures of the field per second while somebody looks; 0: none", 0.0, 10.0),
+    Setting("field_rate", 2.0, "pictures of the field per second while somebody looks; 0: none", 0.0, 10.0),
     Setting("field_arrows", 24.0, "arrows along the floor's longer side in such a picture", 4.0, 60.0),
     Setting("field.model", DEFAULT_MODEL, "which field guides", choices=MODELS, live=True),
     *tunable_settings(),

@@ -10,15 +10,24 @@ from geometry_msgs.msg import Point
 from std_msgs.msg import ColorRGBA
 from visualization_msgs.msg import Marker, MarkerArray
 
+from fieldnav_ros.drive import wrap
 from fieldnav_ros.field.avoidance import Obstacles
 from fieldnav_ros.guide import Memory, Senses, guide
 from fieldnav_ros.model import Pose, Robot
 from fieldnav_ros.nodes.convert import quaternion_of, stamp_of
-from fieldnav_ros.parameters import Numbers
+from fieldnav_ros.parameters import FloatArray, Numbers
 from fieldnav_ros.yard import Arrival, Floor
 
 MOST_OBSTACLES = 50
 ARROW_SHARE = 0.7
+ASIDE = 0.05
+"""Angle (rad) between heading and approach from which on an arrow counts as turned aside."""
+SLOWED = 0.8
+"""Share of the approach's speed below which an arrow counts as slowed down."""
+LONG = 1.0
+"""Seconds in which any speed is reached: what is shown is what is wanted."""
+CRUISE = 0.6
+"""Share of its largest speed at which the robot is assumed to come along where an arrow stands."""
 FLAT = 0.005
 """Height in m of what lies on the floor."""
 _GREY, _GREEN, _RED, _AMBER, _BLUE = (0.6, 0.6, 0.6), (0.1, 0.7, 0.2), (0.8, 0.2, 0.1), (0.9, 0.6, 0.1), (0.2, 0.4, 0.9)
@@ -60,10 +69,14 @@ def draw(picture: Picture) -> MarkerArray:
 def _marker(picture: Picture, space: str, number: int, kind: int, colour: tuple[float, ...], opaque: float) -> Marker:
     marker = Marker(ns=space, id=number, type=kind, action=Marker.ADD)
     marker.header.frame_id, marker.header.stamp = picture.frame, stamp_of(picture.stamp)
-    red, green, blue = colour
-    marker.color = ColorRGBA(r=red, g=green, b=blue, a=opaque)
+    marker.color = _colour(colour, opaque)
     marker.pose.orientation.w = 1.0
     return marker
+
+
+def _colour(colour: tuple[float, ...], opaque: float) -> ColorRGBA:
+    red, green, blue = colour
+    return ColorRGBA(r=red, g=green, b=blue, a=opaque)
 
 
 def _point(x: float, y: float) -> Point:
@@ -110,32 +123,60 @@ def _obstacle(picture: Picture, index: int) -> list[Marker]:
 
 
 def _arrows(picture: Picture, goal: Pose) -> Marker:
-    """Return heading arrows on a grid as one list of lines, a short head to each."""
-    (x0, x1), (y0, y1) = picture.floor.x, picture.floor.y
-    step = max(x1 - x0, y1 - y0) / picture.columns
-    grid_x, grid_y = np.meshgrid(np.arange(x0 + step / 2, x1, step), np.arange(y0 + step / 2, y1, step))
-    x, y = grid_x.ravel(), grid_y.ravel()
-    rows = x.size
-    wanted = [np.full(rows, value) for value in (goal.x, goal.y, goal.yaw)]
-    shape = (picture.obstacles.x.shape[0], rows)
-    crowd = Obstacles(*(np.broadcast_to(part, shape) for part in picture.obstacles))
-    heading = guide(
-        Senses._make([x, y, np.zeros(rows), *wanted, crowd]), picture.numbers, picture.robot, picture.floor,
-        Memory.start(rows), 0.0, picture.model,
-    ).heading  # fmt: skip
+    """Return heading arrows on a grid as one list of lines, a short head to each; none where an obstacle is touched.
+
+    Blue where the approach alone speaks, amber where obstacles or walls turn the robot aside, slow it down or send it
+    back; for one that drives along the approach at CRUISE.
+    """
+    x, y = _grid(picture)
+    nobody = Obstacles.none(x.size)
+    way, freely = _advice(picture, goal, x, y, np.zeros(x.size), nobody, None)
+    crowd = Obstacles(*(np.broadcast_to(part, (part.shape[0], x.size)) for part in picture.obstacles))
+    heading, speed = _advice(picture, goal, x, y, way, crowd, picture.floor)
+    aside = (np.abs(wrap(heading - way)) > ASIDE) | (speed < SLOWED * freely)
     marker = _marker(picture, "heading", 0, Marker.LINE_LIST, _BLUE, 0.8)
     marker.scale.x = 0.01
-    length = ARROW_SHARE * step
-    for px, py, way in zip(x, y, heading):
-        cos, sin = math.cos(way), math.sin(way)
-        tail, tip = (
-            (px - 0.5 * length * cos, py - 0.5 * length * sin),
-            (px + 0.5 * length * cos, py + 0.5 * length * sin),
-        )
-        marker.points += [_point(*tail), _point(*tip)]
-        for side in (-1.0, 1.0):
-            back = way + math.pi + 0.5 * side
-            marker.points += [
-                _point(*tip), _point(tip[0] + 0.3 * length * math.cos(back), tip[1] + 0.3 * length * math.sin(back))
-            ]  # fmt: skip
+    length = ARROW_SHARE * _step(picture)
+    for px, py, angle, turned in zip(x, y, heading, aside):
+        lines = _arrow(px, py, angle, length)
+        marker.points += lines
+        marker.colors += [_colour(_AMBER if turned else _BLUE, 0.8)] * len(lines)
     return marker
+
+
+def _step(picture: Picture) -> float:
+    (x0, x1), (y0, y1) = picture.floor.x, picture.floor.y
+    return max(x1 - x0, y1 - y0) / picture.columns
+
+
+def _grid(picture: Picture) -> tuple[FloatArray, FloatArray]:
+    """Return the places (m) of the arrows, each (N,): those at which the robot would touch no obstacle."""
+    (x0, x1), (y0, y1), step = picture.floor.x, picture.floor.y, _step(picture)
+    grid_x, grid_y = np.meshgrid(np.arange(x0 + step / 2, x1, step), np.arange(y0 + step / 2, y1, step))
+    x, y, there = grid_x.ravel(), grid_y.ravel(), picture.obstacles
+    free = (np.hypot(x - there.x, y - there.y) > there.radius + picture.robot.radius).all(axis=0)
+    return x[free], y[free]
+
+
+def _advice(
+    picture: Picture, goal: Pose, x: FloatArray, y: FloatArray, yaw: FloatArray, crowd: Obstacles, floor: Floor | None
+) -> tuple[FloatArray, FloatArray]:
+    """Return heading (rad) and speed (m/s) that the field asks for, each (N,)."""
+    wanted = [np.full(x.size, value) for value in (goal.x, goal.y, goal.yaw)]
+    speed = np.full(x.size, CRUISE * picture.robot.wheel_speed)
+    moving = Memory.start(x.size)._replace(left=speed, right=speed)
+    senses = Senses._make([x, y, yaw, *wanted, crowd])
+    advice = guide(senses, picture.numbers, picture.robot, floor, moving, LONG, picture.model)
+    return advice.heading, advice.v
+
+
+def _arrow(x: float, y: float, way: float, length: float) -> list[Point]:
+    """Return an arrow about a place as three lines."""
+    cos, sin = 0.5 * length * math.cos(way), 0.5 * length * math.sin(way)
+    tip, lines = (x + cos, y + sin), [_point(x - cos, y - sin), _point(x + cos, y + sin)]
+    for side in (-1.0, 1.0):
+        back = way + math.pi + 0.5 * side
+        lines += [
+            _point(*tip), _point(tip[0] + 0.3 * length * math.cos(back), tip[1] + 0.3 * length * math.sin(back))
+        ]  # fmt: skip
+    return lines
