@@ -24,14 +24,16 @@ from fieldnav_ros.yard import Arrival, Yard
 TRUST = 1.0
 """Of new positions of obstacles, the judge's own default."""
 LOCKSTEP_PATIENCE = 120.0
+JUDGED = ("run", "observe")
+"""Actions of requests that are episodes."""
 
 
 class Request(Protocol):
-    """What an ``episode/request`` to run says."""
+    """What an ``episode/request`` to run or to observe says."""
 
     @property
     def action(self) -> str:
-        """``run`` or ``stop``."""
+        """``run``, ``observe``, or what is no episode."""
 
     @property
     def episode(self) -> str:
@@ -171,7 +173,7 @@ class _Scorer:
         except InputError:
             self._bad += 1
             return False
-        if request.action != "run":
+        if request.action not in JUDGED:
             # the word to stop that follows a report may overtake the very pose that was reported on
             return self._request is not None and not self._reported
         if self._request is not None:

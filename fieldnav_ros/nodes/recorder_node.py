@@ -28,7 +28,7 @@ from fieldnav_ros.errors import InputError
 from fieldnav_ros.nodes.base import MATCH_STAMPS, OK, RELIABLE_INPUT, WARN, FieldnavNode, run
 from fieldnav_ros.nodes.convert import POSE_TYPES
 from fieldnav_ros.nodes.declare import Setting
-from fieldnav_ros.nodes.payloads import RunEpisode, decode_outcome, decode_request
+from fieldnav_ros.nodes.payloads import EpisodeRequested, decode_outcome, decode_request
 
 SETTINGS: tuple[Setting, ...] = (
     Setting("bags", "bags", "folder for the bags, one for each episode; made where it is not there"),
@@ -108,7 +108,7 @@ class RecorderNode(FieldnavNode):
             _folder(given["bags"]), given["queue_messages"], int(given["queue_megabytes"] * 2**20)
         )  # fmt: skip
         self._lockstep: bool = given["match_stamps"]
-        self._episode = ""
+        self._running: EpisodeRequested | None = None
         self._ends: float | None = None
         self._latched: dict[str, Kept] = {}
         self._parameters: dict[tuple[str, str], Kept] = {}
@@ -124,6 +124,10 @@ class RecorderNode(FieldnavNode):
         self.create_timer(0.1, self._look_at_clock)
         self.state("waiting for an episode")
         self.log.info(f"recording to {Path(given['bags']).resolve()}")
+
+    @property
+    def _episode(self) -> str:
+        return self._running.episode if self._running is not None else ""
 
     def values(self) -> dict[str, object]:
         """Return what diagnostics show of the recording."""
@@ -195,25 +199,27 @@ class RecorderNode(FieldnavNode):
 
     def _on_request(self, index: int, data: bytes) -> None:
         request = self.decoded(decode_request, deserialize_message(data, String))
-        if isinstance(request, RunEpisode) and request.episode != self._episode:
-            self._begin(request.episode, Kept(index, time.time_ns(), data))
+        if isinstance(request, EpisodeRequested) and request.episode != self._episode:
+            self._begin(request, Kept(index, time.time_ns(), data))
             return
         self._keep(index, data)
-        if request is not None and not isinstance(request, RunEpisode) and self._episode:
+        # a drive to the next start is judged by nobody: no episode, but the end of one
+        if request is not None and not isinstance(request, EpisodeRequested) and self._running is not None:
             self._end_soon()
 
     def _on_outcome(self, index: int, data: bytes) -> None:
         self._keep(index, data)
         outcome = self.decoded(decode_outcome, deserialize_message(data, String))
-        if outcome is not None and outcome.episode == self._episode:
+        if outcome is not None and self._running is not None and self._running.ended_by(outcome):
             self._end_soon()
 
     # -- bags
 
-    def _begin(self, episode: str, request: Kept) -> None:
-        if self._episode:
+    def _begin(self, asked: EpisodeRequested, request: Kept) -> None:
+        if self._running is not None:
             self._recorder.end()
-        self._episode, self._ends = episode, None
+        episode = asked.episode
+        self._running, self._ends = asked, None
         self._dropped_before, self._said_drops = self._recorder.tally.dropped, False
         self.counts["episodes"] += 1
         self._recorder.begin(episode, self._channels(), self._about(episode))
@@ -255,7 +261,7 @@ class RecorderNode(FieldnavNode):
         if self._ends is not None and time.monotonic() >= self._ends:
             self._recorder.end()
             self.state(f"episode {self._episode} recorded", OK)
-            self._episode, self._ends = "", None
+            self._running, self._ends = None, None
         tally = self._recorder.tally
         while tally.failures:
             sentence = f"{tally.failures.popleft()}; the session goes on, recording with the next episode"

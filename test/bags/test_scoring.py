@@ -25,7 +25,7 @@ from fieldnav_ros.bags.scoring import OtherRules, number_of, score_bag
 from fieldnav_ros.crowd import NANO, Reading
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.model import Layout, OutcomeKind, Pose
-from fieldnav_ros.nodes.payloads import StopEpisode, decode_request
+from fieldnav_ros.nodes.payloads import ObserveEpisode, StopEpisode, decode_request
 from fieldnav_ros.world.layouts import draw_many
 
 GRADES = ("empty", "parked", "moving")
@@ -80,6 +80,15 @@ def test_a_stopped_episode_and_a_cut_recording_have_no_outcome(tmp_path: Path) -
     cut = score_bag(write(tmp_path, "cut", lines[:40]), YARD, decode_request)
     assert cut.outcome is None
     assert len(cut.t) == 19
+
+
+def test_a_watched_episode_is_judged_like_any_other(tmp_path: Path) -> None:
+    seen, outcome = drive(NEAR, 8.0)
+    watched = ObserveEpisode(**asked("match.1", NEAR, 8.0).model_dump(exclude={"action"}))
+    lines = lines_of(asked("match.1", NEAR, 8.0), seen, outcome)
+    path = write(tmp_path, "match.1", [(0, BEGAN, text(watched)), *lines[1:]])
+    found = score_bag(path, YARD, decode_request)
+    assert (found.outcome, found.number) == (outcome, None)
 
 
 def test_what_the_live_judge_ignores_is_ignored_and_counted(tmp_path: Path) -> None:

@@ -28,7 +28,15 @@ from std_msgs.msg import String
 from fieldnav_ros.model import Layout, OutcomeKind, Pose
 from fieldnav_ros.nodes.base import LATCHED, RELIABLE, SENSOR
 from fieldnav_ros.nodes.convert import command_message, obstacles_message, pose_message
-from fieldnav_ros.nodes.payloads import EpisodeOutcome, RunEpisode, StopEpisode, encode
+from fieldnav_ros.nodes.payloads import (
+    DriveTo,
+    EpisodeOutcome,
+    ObserveEpisode,
+    RunEpisode,
+    Source,
+    StopEpisode,
+    encode,
+)
 from fieldnav_ros.resources import config_path
 
 pytestmark = pytest.mark.ros
@@ -76,8 +84,8 @@ class Stack(Probe):
     def stop(self, name: str) -> None:
         self.send("/episode/request", String(data=encode(StopEpisode(episode=name))))
 
-    def report(self, name: str) -> None:
-        outcome = EpisodeOutcome(episode=name, kind=OutcomeKind.ARRIVED, time=1.0, stamp=0.0, source="judge")
+    def report(self, name: str, source: Source = "judge") -> None:
+        outcome = EpisodeOutcome(episode=name, kind=OutcomeKind.ARRIVED, time=1.0, stamp=0.0, source=source)
         self.send("/episode/outcome", String(data=encode(outcome)))
 
     def drive(self) -> None:
@@ -274,6 +282,29 @@ def test_no_request_writes_over_a_bag_or_outside_the_folder(stack: Stack, tmp_pa
     assert sorted(path.name for path in bags.iterdir()) == ["000005.ab.1", "000006.ab.1", "link"]
     assert not list((bags / "000005.ab.1").iterdir())
     assert sorted(path.name for path in tmp_path.iterdir()) == ["bags", "outside"]
+
+
+def test_what_is_judged_is_recorded_and_ends_with_the_outcome_that_counts(stack: Stack, tmp_path: Path) -> None:
+    """A watched way to a goal gets its bag, a drive to the next start none; the judge's word does not end it here."""
+    with recorder(tmp_path):
+        stack.ready()
+        watched = ObserveEpisode(
+            episode="match.1", set="s", layout=LAYOUT, frame="map", time_limit=10.0, outcomes="referee"
+        )  # fmt: skip
+        stack.send("/episode/request", String(data=encode(watched)))
+        stack.until(lambda: "match.1" in stack.shown().get("", ""))
+        stack.report("match.1")
+        stack.drive_for(100)
+        assert not recorded(tmp_path / "match.1")
+        stack.report("match.1", source="referee")
+        stack.until(lambda: recorded(tmp_path / "match.1"))
+        drive = DriveTo(episode="d.1", goal=LAYOUT.start, frame="map", time_limit=10.0)
+        stack.send("/episode/request", String(data=encode(drive)))
+        stack.run_until_recording("000008.ab.1")
+        stack.stop("000008.ab.1")
+        stack.until(lambda: recorded(tmp_path / "000008.ab.1"))
+    assert len(by_mcap(tmp_path / "match.1")["/episode/outcome"]) == 2
+    assert sorted(path.name for path in tmp_path.iterdir()) == ["000008.ab.1", "match.1"]
 
 
 def test_a_publisher_that_offers_less_is_heard_all_the_same(stack: Stack, tmp_path: Path) -> None:
