@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import re
 from collections.abc import Callable
 from dataclasses import dataclass
@@ -24,6 +25,8 @@ from fieldnav_ros.yard import Arrival, Yard
 TRUST = 1.0
 """Of new positions of obstacles, the judge's own default."""
 LOCKSTEP_PATIENCE = 120.0
+ROUNDING = 1e-3
+"""Seconds; stamps in outcomes are numbers of double precision, poses lie further apart."""
 JUDGED = ("run", "observe")
 """Actions of requests that are episodes."""
 
@@ -133,6 +136,22 @@ def score(content: Content, yard: Yard, decode: Decode, rules: OtherRules = SAME
     return _Scorer(content, yard, decode, rules).run()
 
 
+def _start_by_report(content: Content) -> int:
+    """Return the stamp (ns) of the pose that the live judge began with, as its outcome tells; 0 where none does.
+
+    The request reached the judge at another moment than the recorder, so that the one may have seen a pose more.
+    """
+    for entry in content.entries:
+        if entry.role == "episode/outcome":
+            try:
+                said = json.loads(entry.message.data)
+                if said["source"] == "judge":
+                    return int((float(said["stamp"]) - float(said["time"]) - ROUNDING) * NANO)
+            except (ValueError, TypeError, KeyError, OverflowError, RecursionError):
+                continue
+    return 0
+
+
 class _Scorer:
     def __init__(self, content: Content, yard: Yard, decode: Decode, rules: OtherRules) -> None:
         self._content, self._decode, self._rules = content, decode, rules
@@ -146,6 +165,7 @@ class _Scorer:
         self._judging = Judging(yard, TrackingRules(alpha=TRUST), yard.cart_radius, patience)
         self._request: Request | None = None
         self._begun, self._reported = 0, False
+        self._not_before = 0 if lockstep else _start_by_report(content)
         self._readings: list[Reading] = []
         self._bad = 0
 
@@ -188,6 +208,8 @@ class _Scorer:
         try:
             if entry.role == "pose":
                 reading = reading_from(entry.message, request.frame)
+                if reading.stamp < self._not_before:
+                    return None
                 self._readings.append(reading)
                 return self._judging.pose(reading, self._moment(entry, reading.stamp), now)
             if entry.role == "obstacles":

@@ -114,7 +114,9 @@ def drive(
             pass
 
 
-def lines_of(request: RunEpisode, seen: Sequence[tuple[Sighting, Reading]], outcome: Outcome | None) -> list[Line]:
+def lines_of(
+    request: RunEpisode, seen: Sequence[tuple[Sighting, Reading]], outcome: Outcome | None, stamp: float | None = None
+) -> list[Line]:
     """Return a recording: the request, each moment's obstacles and pose, the outcome and the word to stop."""
     lines: list[Line] = [(0, BEGAN, text(request))]
     for sighting, reading in seen:
@@ -122,7 +124,8 @@ def lines_of(request: RunEpisode, seen: Sequence[tuple[Sighting, Reading]], outc
         lines += [(3, now, obstacles(sighting)), (2, now + 1000, pose(reading))]
     if outcome is not None:
         said = EpisodeOutcome(
-            episode=request.episode, kind=outcome.kind, time=outcome.time, stamp=0.0, source="judge"
+            episode=request.episode, kind=outcome.kind, time=outcome.time, source="judge",
+            stamp=seen[-1][1].stamp / NANO if stamp is None else stamp,
         )  # fmt: skip
         end = lines[-1][1] + 1000
         lines += [(1, end, text(said)), (0, end + 1000, text(StopEpisode(episode=request.episode)))]

@@ -192,6 +192,6 @@ def test_a_topic_of_another_type_is_refused(tmp_path: Path, monkeypatch: pytest.
 def test_helpers_make_what_the_recorder_makes(tmp_path: Path) -> None:
     """A whole simulated episode is as readable as the short one above."""
     path, outcome = recorded(tmp_path, "000003.ab.1", NEAR, 8.0)
-    assert len(read_bag(path).entries) == len(lines_of(asked("x", NEAR, 8.0), [], outcome)) + 2 * len(
+    assert len(read_bag(path).entries) == len(lines_of(asked("x", NEAR, 8.0), [], outcome, 0.0)) + 2 * len(
         score_bag(path, YARD, decode_request).t
     )

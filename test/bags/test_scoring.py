@@ -8,6 +8,7 @@ import numpy as np
 import pytest
 from bags.recordings import (
     BEGAN,
+    EXACT,
     LOCKSTEP,
     PACED,
     YARD,
@@ -24,6 +25,7 @@ from bags.recordings import (
 from fieldnav_ros.bags.scoring import OtherRules, number_of, score_bag
 from fieldnav_ros.crowd import NANO, Reading
 from fieldnav_ros.errors import InputError
+from fieldnav_ros.judging import Judging, Patience
 from fieldnav_ros.model import Layout, OutcomeKind, Pose
 from fieldnav_ros.nodes.payloads import ObserveEpisode, StopEpisode, decode_request
 from fieldnav_ros.world.layouts import draw_many
@@ -80,6 +82,26 @@ def test_a_stopped_episode_and_a_cut_recording_have_no_outcome(tmp_path: Path) -
     cut = score_bag(write(tmp_path, "cut", lines[:40]), YARD, decode_request)
     assert cut.outcome is None
     assert len(cut.t) == 19
+
+
+def test_the_episode_begins_with_the_pose_that_the_live_judge_began_with(tmp_path: Path) -> None:
+    """The request reached the judge five poses later than the recorder: its times are shorter by those."""
+    seen, _ = drive(NEAR, 8.0)
+    request = asked("1.a.1", NEAR, 8.0)
+    judge = Judging(YARD, EXACT, YARD.cart_radius, Patience())
+    judge.begin(NEAR, YARD.arrival, 8.0, 0.0)
+    ruling = None
+    for sighting, reading in seen[5:]:
+        judge.sighting(sighting, sighting.stamp)
+        ruling = ruling or judge.pose(reading, reading.stamp, reading.stamp / NANO)
+    assert ruling is not None
+    path = write(tmp_path, "late", lines_of(request, seen, ruling.outcome, ruling.stamp / NANO), PACED)
+    assert score_bag(path, YARD, decode_request).outcome == ruling.outcome
+    for report in ("[]", '{"source": "judge"}', '{"source": "judge", "stamp": 1e999, "time": 0}', "{", "[" * 5000):
+        broken = [*lines_of(request, seen, None), (1, BEGAN + 10 * NANO, text(report))]
+        natural = score_bag(write(tmp_path, f"b{len(report)}", broken, PACED), YARD, decode_request).outcome
+        assert natural is not None
+        assert natural.time == pytest.approx(ruling.outcome.time + 0.1)
 
 
 def test_a_watched_episode_is_judged_like_any_other(tmp_path: Path) -> None:
