@@ -7,10 +7,11 @@ import signal
 import subprocess
 import sys
 import tempfile
+import threading
 from collections.abc import Mapping, Sequence
 from pathlib import Path
-from types import TracebackType
-from typing import IO
+from types import FrameType, TracebackType
+from typing import IO, Any
 
 from fieldnav_ros.errors import WorkError
 
@@ -19,10 +20,14 @@ GRACE = 5.0
 
 
 class Processes:
-    """Node processes that live and end together; a context manager."""
+    """Node processes that live and end together; a context manager.
+
+    Inside it SIGTERM and SIGHUP end this program by SystemExit, so that no node is left behind running.
+    """
 
     def __init__(self, environment: Mapping[str, str]) -> None:
         self._environment = {**os.environ, **environment}
+        self._before: dict[int, Any] = {}
         self._children: dict[str, tuple[subprocess.Popen[bytes], IO[bytes]]] = {}
 
     def start(self, node: str, parameters: Mapping[str, object], files: Sequence[Path] = ()) -> None:
@@ -66,12 +71,22 @@ class Processes:
         self._children.clear()
 
     def __enter__(self) -> Processes:
+        if threading.current_thread() is threading.main_thread():
+            self._before = {number: signal.signal(number, _leave) for number in (signal.SIGTERM, signal.SIGHUP)}
         return self
 
     def __exit__(
         self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
     ) -> None:
+        for number in self._before:
+            signal.signal(number, signal.SIG_IGN)  # the nodes are being ended already
         self.stop()
+        for number, handler in self._before.items():
+            signal.signal(number, handler)
+
+
+def _leave(number: int, _frame: FrameType | None) -> None:
+    raise SystemExit(128 + number)
 
 
 def _yaml(value: object) -> str:
