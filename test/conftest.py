@@ -9,6 +9,7 @@ import tempfile
 from pathlib import Path
 
 import pytest
+from faults.table import pytest_terminal_summary as pytest_terminal_summary  # a hook: the table of faults
 from hypothesis import settings
 
 from fieldnav_ros.nodes.domain import claim_domain

@@ -208,9 +208,13 @@ class _Lock:
         if not self._path.exists() or os.fstat(file).st_ino != self._path.stat().st_ino:
             os.close(file)
             return False
-        os.ftruncate(file, 0)
-        os.pwrite(file, f"process {os.getpid()} on {socket.gethostname()}\n".encode(), 0)
         self._file = file
+        try:
+            os.ftruncate(file, 0)
+            os.pwrite(file, f"process {os.getpid()} on {socket.gethostname()}\n".encode(), 0)
+        except OSError:  # a full disk: who cannot be named must not hold the lock
+            self.free()
+            raise
         return True
 
     def free(self) -> None:
@@ -255,6 +259,11 @@ def _prepare(path: Path, connection: sqlite3.Connection, new: bool) -> None:
             connection.execute(f"PRAGMA user_version={SCHEMA}")
             connection.execute("COMMIT")
     except sqlite3.OperationalError as error:
+        if "readonly" in str(error) and not new:
+            raise WorkError(
+                f"{path}: its last transaction was cut off and has to be taken back, which takes the right to write;"
+                " copy it together with its -journal file to a folder of your own"
+            ) from error
         raise WorkError(f"{path}: cannot be written: {error}") from error
     except sqlite3.DatabaseError as error:
         raise InputError(f"{path}: is no ledger: {error}") from error
