@@ -63,7 +63,7 @@ def _pit(arguments: argparse.Namespace) -> Summary:
 def _rehearse(arguments: argparse.Namespace) -> Summary:
     from fieldnav_ros.nodes.rehearse import Rehearsal, run_rehearsal
 
-    names = ("floor_time", "speed", "seed", "outcomes", "starts", "record")
+    names = ("floor_time", "speed", "seed", "grade", "outcomes", "starts", "record", "yard", "floor")
     return run_rehearsal(Rehearsal(arguments.out, **{name: getattr(arguments, name) for name in names}))
 
 
@@ -105,6 +105,9 @@ def _rehearse_arguments(parser: argparse.ArgumentParser) -> None:
         "--speed", type=number("--speed", 0.1, 10), default=1.0, help="multiple of real time (default: %(default)g)"
     )
     parser.add_argument("--seed", type=number("--seed", 0, 2**31, int), default=1, help="default: %(default)s")
+    parser.add_argument("--yard", type=Path, help="what the session is told of the floor (default: the parcel yard)")
+    parser.add_argument("--floor", type=Path, help="what the floor is like, a yard file too (default: an invented one)")
+    parser.add_argument("--grade", default="moving", help="grade of the yard (default: %(default)s)")
     parser.add_argument("--outcomes", choices=("judge", "operator"), default="judge", help="whose outcomes count")
     parser.add_argument("--starts", choices=("region", "marks"), default="region", help="where episodes start")
     parser.add_argument("--record", action="store_true", help="one bag for each episode")

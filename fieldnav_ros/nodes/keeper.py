@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
@@ -20,6 +21,12 @@ from fieldnav_ros.tuning.prior_file import load_prior
 from fieldnav_ros.tuning.session import Session
 from fieldnav_ros.world.layouts import draw
 from fieldnav_ros.yard import Yard
+
+
+CARRYING = 10.0
+"""Seconds that somebody takes to carry the robot to its start, as a first guess."""
+DRIVING = 0.5
+"""Share of its top speed at which a robot gets across the floor, likewise."""
 
 
 class Keeper:
@@ -73,8 +80,16 @@ class Keeper:
             time_limit=self._yard.grade(settings["grade"]).time_limit,
             rounds=settings["rounds"],
             verdict_share=settings["verdict_share"],
-            reset_guess_s=self._yard.reset_time,
+            reset_guess_s=self._reset_guess(),
         )
+
+    def _reset_guess(self) -> float:
+        """Return how long a reset will take (s), until some have been seen."""
+        floor, way = self._yard.floor, self._settings["return"]
+        across = math.hypot(floor.x[1] - floor.x[0], floor.y[1] - floor.y[0])
+        drive = across / (DRIVING * self._yard.robot.wheel_speed)
+        guesses = {"simulator": 0.0, "drive": drive, "operator": CARRYING}
+        return max(self._yard.reset_time, guesses[way])
 
     def _draw(self, grade: str, seed: int) -> Layout:
         layout = draw(self._yard, grade, np.random.default_rng(seed), self._settings["starts"] == "marks")

@@ -13,6 +13,7 @@ from fieldnav_ros.nodes.pit import command as pit
 from fieldnav_ros.nodes.processes import Processes
 from fieldnav_ros.resources import config_path
 
+FASTEST_LAG = 0.045
 NODES = ("simulator_node", "judge_node", "guidance_node", "tuner_node")
 
 
@@ -27,6 +28,10 @@ class Rehearsal(NamedTuple):
     outcomes: str = "judge"
     starts: str = "region"
     record: bool = False
+    yard: Path | None = None
+    """What the session is told of the floor; none: the parcel yard."""
+    floor: Path | None = None
+    """What the floor is like; none: config/yards/rehearsal_floor.yaml."""
 
     @property
     def ledger(self) -> Path:
@@ -35,16 +40,21 @@ class Rehearsal(NamedTuple):
 
     def parameters(self, node: str) -> dict[str, object]:
         """Return what a node needs on top of its own file and config/rehearsal.yaml."""
+        told: dict[str, object] = {"yard": self.yard} if self.yard else {}
         if node == "simulator_node":
-            floor = config_path("yards/rehearsal_floor.yaml")
-            return {"yard": floor, "speed": self.speed, "seed": self.seed, "grade": self.grade}
+            floor = self.floor or config_path("yards/rehearsal_floor.yaml")
+            # faster than real time the world waits for guidance, or a busy machine would be a clumsy robot
+            lag = FASTEST_LAG if self.speed > 1.0 else 0.0
+            return {
+                "yard": floor, "speed": self.speed, "seed": self.seed, "grade": self.grade, "command_lag": lag
+            }  # fmt: skip
         if node == "tuner_node":
             return {
-                "ledger": self.ledger, "champion_file": self.folder / "champion.yaml", "floor_time": self.floor_time,
-                "seed": self.seed, "grade": self.grade, "outcomes": self.outcomes,
+                **told, "ledger": self.ledger, "champion_file": self.folder / "champion.yaml",
+                "floor_time": self.floor_time, "seed": self.seed, "grade": self.grade, "outcomes": self.outcomes,
                 "starts": self.starts, "place": "rehearsal, a simulated floor",
             }  # fmt: skip
-        return {"bags": self.folder / "bags", "reliable": True} if node == "recorder_node" else {}
+        return {"bags": self.folder / "bags", "reliable": True} if node == "recorder_node" else told
 
     def start(self, processes: Processes) -> None:
         """Start the nodes."""

@@ -18,7 +18,7 @@ from fieldnav_ros.yard import Yard
 
 QUICK_REST = 0.3
 """Seconds that a robot which drove there by itself must stand: no hand is near it."""
-BACKUP = 5.0
+BACKUP = 30.0
 """Seconds beyond a drive's limit on our own clock, for where no poses come to tell the time."""
 
 

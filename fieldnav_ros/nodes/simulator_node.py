@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import sys
 import time
+from collections import deque
 from collections.abc import Sequence
 from typing import Any
 
@@ -35,13 +36,17 @@ SETTINGS: tuple[Setting, ...] = (
         choices=("lockstep", "paced"),
     ),
     Setting("listeners", 2.0, "subscribers to pose without which an episode does not start, lockstep only", 0.0, 100.0),
-    Setting("speed", 1.0, "multiple of real time, paced mode only", 0.05, 20.0),
+    Setting("speed", 1.0, "multiple of real time, at most, paced mode only", 0.05, 20.0),
     Setting("stamped_cmd", True, "cmd_vel as TwistStamped; false: Twist, paced mode only"),
     Setting(
         "resets", True, "place robot and carts where an episode starts; false: a floor that knows of no episodes, "
         "on which only commands move the robot, paced mode only",
     ),
     Setting("grade", "moving", "grade of the yard for such a floor's carts"),
+    Setting(
+        "command_lag", 0.0, "s by which a command may come after the pose it answers before the world waits for it; "
+        "0: it waits for nobody, as a real one, paced mode only", 0.0, 1.0,
+    ),
     Setting("seed", 0, "seed of where everything stands at first on such a floor", 0, 2**31),
     Setting("command_timeout", 0.3, "s without a command after which the robot stops, paced mode only", 0.02, 10.0),
 )
@@ -59,6 +64,9 @@ STEP_NS = round(STEP * NANO)
 PAUSE_NS = NANO
 """Time between the stamps of two episodes, so that nobody takes the reset for driving."""
 MOST_STEPS = 50
+KEPT_STAMPS = 200
+LONGEST_WAIT = 1.0
+"""Seconds that a world which waits for commands waits for one."""
 NOISE_TIME = 300.0
 """Seconds after which the noise of a floor without episodes repeats itself."""
 
@@ -243,6 +251,9 @@ class Paced:
         self._node = node
         self._v = self._w = 0.0
         self._heard = -1e9
+        self._lag = round(node.settings["command_lag"] * NANO)
+        self._answered: int | None = None
+        self._stamps: deque[int] = deque(maxlen=KEPT_STAMPS)
         floor = not node.settings["resets"]
         layout = _floor_layout(node) if floor else _idle_layout(node)
         self._place(Stage(node.yard, layout, NOISE_TIME, walls_hold=floor))
@@ -259,6 +270,8 @@ class Paced:
     def command(self, v: float, w: float, stamp: int) -> None:
         """Drive by this command until another comes or it has grown old."""
         self._v, self._w, self._heard = v, w, time.monotonic()
+        # while it drives, guidance answers a pose with that pose's stamp; where it stops it gives its own time
+        self._answered = stamp if stamp in self._stamps else None
 
     def _place(self, stage: Stage) -> None:
         self._stage = stage
@@ -276,14 +289,25 @@ class Paced:
             self._base += round(lost * NANO)
             due = MOST_STEPS
         for _ in range(due):
+            if self._late():
+                self._began = time.monotonic() - stage.number * STEP / speed
+                return
             old = (time.monotonic() - self._heard) > self._node.settings["command_timeout"]
             stage.command(*((0.0, 0.0) if old else (self._v, self._w)))
             if stage.step() and not stage.lost:
-                self._node.publish(stage, self._base + stage.number * STEP_NS)
+                self._stamps.append(self._base + stage.number * STEP_NS)
+                self._node.publish(stage, self._stamps[-1])
         if self._node.overdue(stage):
             self._node.warn("overdue_episodes", "episode ended by the simulator: its time limit passed, nobody judged")
             self._node.end("overdue")
             self._node.state("idle", OK)
+
+
+    def _late(self) -> bool:
+        """Tell whether guidance drives and is further behind than it may be; not for ever, as it may have died."""
+        if not self._lag or self._answered is None or time.monotonic() - self._heard > LONGEST_WAIT:
+            return False
+        return bool(self._stamps[-1] - self._answered > self._lag)
 
 
 def _idle_layout(node: SimulatorNode) -> Layout:

@@ -113,9 +113,8 @@ def status_of(
 
 
 def _verdict(summary: dict[str, Any]) -> str:
-    word = summary["last_verdict"]
+    word, ended = summary["last_verdict"], summary["ended"]
     if word is None:
-        return ""
-    why = f" ({summary['ended']})" if summary["ended"] else ""
+        return f"none ({ended})" if ended else ""
     kept = "the challenger is better and was accepted" if word == "accept" else "the champion was kept"
-    return f"{kept}{why}"
+    return f"{kept} ({ended})" if ended else kept

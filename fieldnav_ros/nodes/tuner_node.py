@@ -44,6 +44,8 @@ SESSION_ENDED = "session ended"
 FLOOR_TIME_UP = "floor time used up"
 REMEMBERED = 8
 """Episodes that the status tells of."""
+START_TIME = 5.0
+"""Seconds in which the nodes find each other, and no silence is strange."""
 WARNED_FOR = 15.0
 """Seconds for which the status repeats a warning."""
 
@@ -73,7 +75,7 @@ class TunerNode(FieldnavNode):
         self._running: tuple[RunEpisode, Episode, float] | None = None
         self._outcome: Future = Future()
         self._wake: Future = Future()
-        self._message = "waiting for begin"
+        self._message, self._began = "waiting for begin", time.monotonic()
         self._last: deque[PastEpisode] = deque(maxlen=REMEMBERED)
         # no two requests ever share a name, those of an earlier process on the same ledger included
         self._token, self._requests = secrets.token_hex(3), 0
@@ -186,6 +188,8 @@ class TunerNode(FieldnavNode):
         used = self.floor.book(report.time)
         self.keeper.commit(self.session.record(episode.id, report.outcome(), used, report.source))
         self._remember(episode.id, report)
+        if self.session.ended:
+            self.floor.stop()
         self._publish_status()
 
     def _remember(self, number: int, report: EpisodeOutcome) -> None:
@@ -346,7 +350,8 @@ class TunerNode(FieldnavNode):
 
     def _warnings(self) -> tuple[str, ...]:
         age = self.feed.age if self.feed else 0.0
-        if age is None or age > SILENT_POSE:
+        early = time.monotonic() - self._began < START_TIME
+        if not early and (age is None or age > SILENT_POSE):
             self.warn("poses_missing", "no pose of the robot comes" if age is None else f"no pose for {age:.0f} s")
         return tuple(sentence[:1000] for sentence in self.recent_warnings(WARNED_FOR)[:20])
 

@@ -78,7 +78,8 @@ class Decider:
         if blocks:
             return self._generation(state, blocks)
         if plan.episodes_left < 2 * config.least_pairs:
-            return ev.SessionEnded(reason="floor time used up")
+            left = "too little floor time left for a verdict" if plan.episodes_left else "floor time used up"
+            return ev.SessionEnded(reason=left)
         return self._challenger(state) or ev.SessionEnded(reason="too little floor time left for another round")
 
     def _stage(self, state: State, why: str) -> ev.StageBegun:

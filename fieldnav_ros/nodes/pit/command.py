@@ -46,13 +46,17 @@ def run(namespace: str, tuner: str, watch_only: bool, check: Callable[[], None] 
     if not console.is_terminal or console.is_dumb_terminal:
         return _loop(namespace, tuner, watch_only, Lines(), check)
     block = "█" if (console.encoding or "").lower().startswith("utf") else "#"
-    with Live(Text(""), console=console, screen=True, auto_refresh=False) as live:
+    live = Live(Text(""), console=console, screen=True, auto_refresh=False)
 
-        def show(heard: Heard) -> None:
-            live.update(picture(view_of(heard), console.width, console.height, block), refresh=True)
+    def show(heard: Heard) -> None:
+        live.update(picture(view_of(heard), console.width, console.height, block), refresh=True)
 
-        summary = _loop(namespace, tuner, watch_only, show, check)
-    print(LEFT)
+    try:
+        with live:
+            summary = _loop(namespace, tuner, watch_only, show, check)
+        print(LEFT, flush=True)
+    except OSError:  # the terminal went away and could not be tidied up
+        _leave_terminal()
     return summary
 
 
