@@ -27,9 +27,9 @@ pytestmark = pytest.mark.layout
 LAYOUTS = ("checkout", "wheel", "editable", "colcon", "colcon-symlink")
 # pip installs no data files for an editable installation, and a checkout is no prefix that launch could look in.
 in_a_prefix = pytest.mark.parametrize("layout", ["wheel", "colcon", "colcon-symlink"], indirect=True)
-NODES = ("guidance_node", "tuner_node", "simulator_node", "judge_node")
+NODES = ("guidance_node", "tuner_node", "simulator_node", "judge_node", "recorder_node")
 START_TIME, STOP_TIME = 120.0, 60.0
-"""Seconds until a busy machine must have started or stopped four processes."""
+"""Seconds until a busy machine must have started or stopped five processes."""
 # What is tried in each: every file of config/ as the code finds it, and where the code came from.
 FIND_FILES = """
 import json, pathlib, sys

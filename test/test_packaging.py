@@ -154,7 +154,7 @@ def test_manifest_and_setup_say_the_same(manifest: str, setup_data: dict[str, An
 def test_every_executable_has_a_main_that_takes_no_argument(setup_data: dict[str, Any], root: Path) -> None:
     """A console script calls its function without arguments and hands the result to sys.exit."""
     targets = dict(script.split(" = ") for script in setup_data["scripts"])
-    assert {"fieldnav", "guidance_node", "tuner_node", "simulator_node", "judge_node"} <= set(targets)
+    assert {"fieldnav", "guidance_node", "tuner_node", "simulator_node", "judge_node", "recorder_node"} <= set(targets)
     for name, target in targets.items():
         module, _, function = target.partition(":")
         path = root.joinpath(*module.split(".")).with_suffix(".py")

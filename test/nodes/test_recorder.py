@@ -25,7 +25,9 @@ from ros_probe import NodeProcess, Probe
 from rosbags.highlevel import AnyReader
 from std_msgs.msg import String
 
+from fieldnav_ros.bags import definitions
 from fieldnav_ros.model import Layout, OutcomeKind, Pose
+from fieldnav_ros.nodes import recorder_node
 from fieldnav_ros.nodes.base import LATCHED, RELIABLE, SENSOR
 from fieldnav_ros.nodes.convert import command_message, obstacles_message, pose_message
 from fieldnav_ros.nodes.payloads import (
@@ -318,3 +320,16 @@ def test_a_publisher_that_offers_less_is_heard_all_the_same(stack: Stack, tmp_pa
         stack.report("000007.ab.1")
         stack.until(lambda: recorded(tmp_path / "000007.ab.1"))
     assert [message.twist.linear.x for message in by_mcap(tmp_path / "000007.ab.1")["/cmd_vel"]] == [0.25]
+
+
+def test_without_its_libraries_the_recorder_says_what_to_install(
+    monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    monkeypatch.setattr(definitions, "LIBRARIES", ("no_such_library", "rosbags"))
+    monkeypatch.chdir(tmp_path)
+    assert recorder_node.main(["recorder_node"]) == 1
+    said = capsys.readouterr().err
+    assert said.count("\n") == 1
+    assert "no_such_library is not installed" in said
+    assert "python3 -m pip install" in said
+    assert not list(tmp_path.iterdir())
