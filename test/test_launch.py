@@ -38,7 +38,7 @@ def values(root: ET.Element) -> Iterator[str]:
 
 
 def test_there_are_launch_files() -> None:
-    assert {path.name for path in FILES} >= {"sim.launch.xml", "hardware.launch.xml"}
+    assert {path.name for path in FILES} >= {"sim.launch.xml", "hardware.launch.xml", "rehearse.launch.xml"}
 
 
 @pytest.mark.parametrize("path", FILES, ids=lambda path: path.name)
@@ -95,11 +95,29 @@ def test_lockstep_has_the_last_word_in_simulation() -> None:
         assert files[-1] == SHARED + "config/lockstep.yaml"
 
 
+def test_a_rehearsals_nodes_have_the_files_of_a_rehearsal_and_only_the_simulator_knows_the_floor() -> None:
+    for node in tree(FOLDER / "rehearse.launch.xml").iter("node"):
+        files = [param.get("from") for param in node.iter("param") if param.get("from")]
+        assert files[-1] == SHARED + "config/rehearsal.yaml"
+        knows = "$(var floor)" in [param.get("value") for param in node.iter("param")]
+        assert knows is (node.get("exec") == "simulator_node")
+
+
+def test_an_empty_default_of_a_parameter_is_a_quoted_one() -> None:
+    """launch_ros reads values as YAML (its evaluate_parameters.py): nothing at all would be null, which it refuses."""
+    for path in FILES:
+        root = tree(path)
+        given = {param.get("value") for param in root.iter("param")}
+        bare = {arg.get("name") for arg in root.iter("arg") if arg.get("default") == ""}
+        assert not {name for name in bare if f"$(var {name})" in given}
+
+
 def test_no_simulator_starts_beside_real_hardware() -> None:
     assert "simulator_node" not in {node.get("exec") for node in tree(FOLDER / "hardware.launch.xml").iter("node")}
 
 
 def test_topics_of_a_stack_can_be_named_for_hardware() -> None:
     names = {arg.get("name") for arg in tree(FOLDER / "hardware.launch.xml").iter("arg")}
-    topics = {"pose", "obstacles", "cmd_vel", "heading"}
-    assert names >= topics | {"pose_type", "namespace", "yard", "ledger", "floor_time"}
+    topics = {"pose", "obstacles", "goal", "hold", "cmd_vel", "heading"}
+    assert names >= topics | {"pose_type", "stamped_cmd", "frame", "base_frame", "namespace", "yard", "prior", "ledger"}
+    assert names >= {"floor_time", "return", "starts", "outcomes", "mode"}

@@ -54,7 +54,7 @@ class Rehearsal(NamedTuple):
                 "floor_time": self.floor_time, "seed": self.seed, "grade": self.grade, "outcomes": self.outcomes,
                 "starts": self.starts, "place": "rehearsal, a simulated floor",
             }  # fmt: skip
-        return {"bags": self.folder / "bags", "reliable": True} if node == "recorder_node" else told
+        return {"bags": self.folder / "bags"} if node == "recorder_node" else told
 
     def start(self, processes: Processes) -> None:
         """Start the nodes."""

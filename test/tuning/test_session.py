@@ -345,7 +345,7 @@ def test_voiding_the_last_outcome_takes_back_the_decisions_that_followed() -> No
         commit(trial, trial_log, trial.void())
         assert trial.state.floor_used_s == before.floor_used_s
         if not trial.pending():
-            assert trial.state.ended == "floor time used up"  # no time left to run it again
+            assert trial.state.ended in ("floor time used up", "too little floor time left for a verdict")
             continue
         [again] = [e for e in trial.pending() if e.id == trial.state.next_episode - 1]
         assert (again.layout, again.set_id) == (episode.layout, episode.set_id)
