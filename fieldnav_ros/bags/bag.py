@@ -24,6 +24,8 @@ ROLE = "fieldnav_role"
 ABOUT = "fieldnav_ros"
 """Name of the MCAP metadata record with what a reader must know of the recording."""
 METADATA = "metadata.yaml"
+CHUNK = 1 << 16
+"""Bytes after which a chunk is closed in any case: so much at most is lost with a process or to a full disk."""
 VERSION = 9
 """Of rosbag2's metadata.yaml, as Jazzy and Kilted write it."""
 
@@ -61,8 +63,8 @@ class Bag:
         except BaseException:
             os.close(self._folder)
             raise
-        self._stream = BufferedWriter(self._raw, 1 << 18)
-        self._writer: Any = Writer(self._stream, compression=CompressionType.NONE)
+        self._stream = BufferedWriter(self._raw, CHUNK)
+        self._writer: Any = Writer(self._stream, chunk_size=CHUNK, compression=CompressionType.NONE)
         try:
             self._begin(about)
         except BaseException:

@@ -244,7 +244,7 @@ def test_a_full_disk_ends_one_bag_and_not_the_next(stack: Stack, tmp_path: Path)
     words = ["--ros-args", "-p", f"bags:={tmp_path}", "-p", "tail:=0.2"]
     child = subprocess.Popen(
         [sys.executable, "-c", code, *words],
-        preexec_fn=lambda: resource.setrlimit(resource.RLIMIT_FSIZE, (100_000, 100_000)),
+        preexec_fn=lambda: resource.setrlimit(resource.RLIMIT_FSIZE, (200_000, 200_000)),
     )
     try:
         stack.ready()
