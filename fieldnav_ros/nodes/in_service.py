@@ -79,7 +79,7 @@ class InService:
 
     def match_call(self, answer: Future) -> Steps:
         """Put the champion in service at once; ``answer`` gets (done, sentence) within CALL_LIMIT."""
-        end = time.monotonic() + 0.9 * CALL_LIMIT
+        end = time.monotonic() + 0.75 * CALL_LIMIT
         while time.monotonic() < end:
             if self.link.there() and (yield from self._put_quickly(end)):
                 set_id = self._keeper.session.champion.set_id

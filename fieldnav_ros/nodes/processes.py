@@ -56,6 +56,10 @@ class Processes:
         child.wait(GRACE)
         log.close()
 
+    def send(self, node: str, number: int) -> None:
+        """Send one node a signal and go on."""
+        self._children[node][0].send_signal(number)
+
     def stop(self) -> None:
         """End all: SIGINT first, SIGKILL for whoever has not gone in time."""
         for child, _ in self._children.values():

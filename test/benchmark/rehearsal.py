@@ -18,11 +18,11 @@ from pathlib import Path
 from typing import Any
 
 ROOT = Path(__file__).resolve().parent.parent.parent
-sys.path[:0] = [str(ROOT), str(ROOT / "test"), str(ROOT / "test" / "nodes")]
+sys.path[:0] = [str(ROOT), str(ROOT / "test")]
 
 import pit_terminal
 from pit_terminal import PitTerminal, helped
-from test_rehearsal import Witness, session_of
+from rehearsed import Witness, session_of
 
 from fieldnav_ros.crowd import NANO
 from fieldnav_ros.nodes.domain import Domain

@@ -6,66 +6,25 @@ import json
 import re
 from collections.abc import Iterator
 from pathlib import Path
-from typing import Any
 
 import pytest
-import yaml
 
 pytest.importorskip("rclpy", reason="starts real nodes")
 pytest.importorskip("rich", reason="the terminal needs it")
 
-from geometry_msgs.msg import PoseStamped
 from pit_terminal import PitTerminal, helped
-from ros_probe import Probe
-from std_msgs.msg import String
+from rehearsed import Witness, session_of, small
 
 from fieldnav_ros.crowd import NANO
-from fieldnav_ros.nodes.base import RELIABLE, SENSOR
-from fieldnav_ros.nodes.convert import nanoseconds
 from fieldnav_ros.nodes.processes import Processes
 from fieldnav_ros.nodes.rehearse import Rehearsal
 from fieldnav_ros.nodes.tuner_node import FLOOR_TIME_UP
 from fieldnav_ros.params_file import read_parameters
-from fieldnav_ros.resources import config_path
-from fieldnav_ros.tuning.ledger import Ledger
-from fieldnav_ros.tuning.session import Session
 
 pytestmark = pytest.mark.ros
 SPEED, FLOOR_TIME = 5.0, 3.0
 TOLERANCE = 30.0
 """Seconds by which a session may miss its floor time."""
-
-
-def small(shipped: str, folder: Path) -> Path:
-    """Write a small floor under a slow camera, on which episodes and resets are short."""
-    yard: dict[str, Any] = yaml.safe_load(config_path(f"yards/{shipped}.yaml").read_text())
-    yard |= {
-        "floor": {"x": [0.0, 1.4], "y": [0.0, 1.0]}, "marks": [],
-        "start": {"x": [0.2, 0.4], "y": [0.3, 0.7], "yaw": [-0.5, 0.5]},
-        "goal": {"x": [1.0, 1.2], "y": [0.3, 0.7], "yaw": [-0.5, 0.5]},
-    }  # fmt: skip
-    yard["plant"]["pose_rate"] = 30.0
-    path = folder / f"{shipped}.yaml"
-    path.write_text(yaml.safe_dump(yard))
-    return path
-
-
-class Witness(Probe):
-    """Notes every request and outcome and how the poses' clock goes, independently of the tuner."""
-
-    def __init__(self) -> None:
-        super().__init__()
-        self.requests = self.hear(String, "episode/request", RELIABLE)
-        self.outcomes = self.hear(String, "episode/outcome", RELIABLE)
-        self.stamp = 0
-        self.node.create_subscription(PoseStamped, "pose", self._on_pose, SENSOR)
-
-    def _on_pose(self, message: PoseStamped) -> None:
-        self.stamp = nanoseconds(message.header.stamp)
-
-    def catch_up(self) -> None:
-        for _ in range(100):
-            self.spin(0.0)
 
 
 @pytest.fixture
@@ -79,14 +38,6 @@ def rehearsal(tmp_path: Path) -> Iterator[Rehearsal]:
         with PitTerminal() as terminal:
             terminal.until(lambda screen: "READY TO BEGIN" in screen, lambda screen: processes.check())
         yield made
-
-
-def session_of(ledger: Path) -> tuple[Session, list[Any]]:
-    with Ledger.read(ledger) as reader:
-        events = list(reader.events())
-    session = Session()
-    session.apply(*events)
-    return session, events
 
 
 def test_a_session_from_begin_to_match_call_through_a_terminal_that_is_lost_on_the_way(rehearsal: Rehearsal) -> None:
