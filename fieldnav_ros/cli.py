@@ -29,7 +29,7 @@ Summary = dict[str, Any]
 def _demo(arguments: argparse.Namespace) -> Summary:
     from fieldnav_ros.nodes.demo import run_demo  # rclpy is needed by this verb alone
 
-    return run_demo(arguments.out, arguments.floor_time, arguments.seed)
+    return run_demo(arguments.out, arguments.floor_time, arguments.seed, arguments.record)
 
 
 def _report(arguments: argparse.Namespace) -> Summary:
@@ -81,6 +81,7 @@ def build_parser() -> argparse.ArgumentParser:
     demo.add_argument(
         "--seed", type=number("--seed", 0, 2**31, int), default=1, help="seed of the session (default: %(default)s)"
     )
+    demo.add_argument("--record", action="store_true", help="a bag of each episode as well, in the folder bags")
     pit = _verb(verbs, "pit", _pit, "the operator's terminal beside the floor")
     pit.add_argument("--namespace", default="", metavar="NS", help="namespace of the nodes (default: none)")
     pit.add_argument("--tuner", default="tuner_node", metavar="NAME", help="name of the tuner (default: %(default)s)")

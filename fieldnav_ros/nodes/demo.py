@@ -55,8 +55,13 @@ class Files:
         """The page about the session."""
         return self.folder / "report.html"
 
+    @property
+    def bags(self) -> Path:
+        """A bag of each episode, if they were recorded."""
+        return self.folder / "bags"
 
-def run_demo(out: Path | None, floor_time_min: float, seed: int) -> dict[str, Any]:
+
+def run_demo(out: Path | None, floor_time_min: float, seed: int, record: bool = False) -> dict[str, Any]:
     """Run the demo and return its summary; progress goes to standard output.
 
     A folder named by the caller whose session was cut off is gone on with. Raises WorkError where a node dies.
@@ -65,10 +70,13 @@ def run_demo(out: Path | None, floor_time_min: float, seed: int) -> dict[str, An
     _make(files.folder)
     began = time.monotonic()
     print(f"The parcel yard, an invented floor: four nodes, each its own process, {floor_time_min:g} simulated min.")
-    with _graph(files, floor_time_min, seed) as (processes, watch):
+    with _graph(files, floor_time_min, seed, record) as (processes, watch):
         _follow(processes, watch, floor_time_min)
     seconds = time.monotonic() - began
-    return _result(files, seed, seconds)
+    summary = _result(files, seed, seconds)
+    if record:
+        print(f"{files.bags}   a bag of each episode, for 'fieldnav rescore' and 'fieldnav report --bags'")
+    return {**summary, "bags": str(files.bags) if record else None}
 
 
 def _free_folder() -> Path:
@@ -99,16 +107,21 @@ def tuner_parameters(files: Files, floor_time_min: float, seed: int) -> dict[str
 
 
 @contextmanager
-def _graph(files: Files, floor_time_min: float, seed: int) -> Iterator[tuple[Processes, Watch]]:
+def _graph(files: Files, floor_time_min: float, seed: int, record: bool) -> Iterator[tuple[Processes, Watch]]:
     domain = Domain()
     environment = domain.environment()
     os.environ.update(environment)
-    tuner = tuner_parameters(files, floor_time_min, seed)
+    told: dict[str, dict[str, object]] = {
+        "tuner_node": tuner_parameters(files, floor_time_min, seed), "recorder_node": {"bags": files.bags},
+    }  # fmt: skip
+    if record:
+        told["simulator_node"] = {"listeners": 3.0}  # guidance, judge and recorder see the first pose
+    nodes = (*(["recorder_node"] if record else []), "simulator_node", "judge_node", "guidance_node", "tuner_node")
     context = Context()
     with Processes(environment) as processes:
-        for node in ("simulator_node", "judge_node", "guidance_node", "tuner_node"):
+        for node in nodes:
             own = config_path(f"{node.removesuffix('_node')}.yaml")
-            processes.start(node, tuner if node == "tuner_node" else {}, [own, config_path("lockstep.yaml")])
+            processes.start(node, told.get(node, {}), [own, config_path("lockstep.yaml")])
         watch = Watch(context)
         try:
             yield processes, watch
