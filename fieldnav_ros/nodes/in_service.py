@@ -26,8 +26,13 @@ Steps = Generator[Wait, Any, None]
 
 def pause(seconds: float) -> Steps:
     """Let time pass."""
+    yield from pause_until(Future(), seconds)
+
+
+def pause_until(wake: Future, seconds: float) -> Steps:
+    """Let time pass until ``wake`` is done, at most ``seconds``."""
     try:
-        yield Wait(Future(), seconds)
+        yield Wait(wake, seconds)
     except LateError:
         return
 

@@ -16,16 +16,16 @@ from fieldnav_ros.errors import InputError
 from fieldnav_ros.model import Layout, Outcome, OutcomeKind, Pose
 from fieldnav_ros.nodes.base import LATCHED, FieldnavNode
 from fieldnav_ros.nodes.convert import goal_from
-from fieldnav_ros.nodes.in_service import InService, Steps
+from fieldnav_ros.nodes.in_service import InService, Steps, pause_until
 from fieldnav_ros.nodes.keeper import Keeper
 from fieldnav_ros.nodes.payloads import EpisodeOutcome, ObserveEpisode
 from fieldnav_ros.nodes.pose_feed import PoseFeed
-from fieldnav_ros.nodes.script import LateError, Wait
 from fieldnav_ros.yard import Yard
 
 NO_OUTCOME = Outcome(kind=OutcomeKind.VOID, time=0.0)
 LOOK_EVERY = 5.0
-"""Seconds between two looks at what guidance holds."""
+"""Seconds between two looks at what guidance holds; LOOK_AGAIN where it is not known to be the champion."""
+LOOK_AGAIN = 0.5
 
 
 class Observer:
@@ -60,22 +60,16 @@ class Observer:
     def steps(self) -> Steps:
         """Record each outcome with the set that guidance was seen to hold; for ever."""
         while True:
-            if self._service.link.there():
-                yield from self._service.look()
             self._wake = Future()
             if not self._ended:
-                yield from self._wait(self._wake)
+                yield from pause_until(self._wake, LOOK_EVERY if self._service.confirmed else LOOK_AGAIN)
+            if self._service.link.there():
+                yield from self._service.look()
             self._look_at_clock()
             while self._ended:
                 episode, outcome, source = self._ended.popleft()
                 name, set_id = episode.episode, self._service.confirmed
                 self._keeper.commit(self._keeper.session.observe(name, set_id, episode.layout, outcome, source))
-
-    def _wait(self, wake: Future) -> Steps:
-        try:
-            yield Wait(wake, LOOK_EVERY)
-        except LateError:
-            return
 
     def _end(self, outcome: Outcome, source: str) -> None:
         if self.episode is not None:
