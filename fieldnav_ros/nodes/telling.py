@@ -74,10 +74,7 @@ def todo_of(scene: Scene) -> str:
 
 def _at_the_end(scene: Scene, state: str) -> str:
     if not scene.confirmed:
-        return (
-            f"Champion {scene.champion} is NOT confirmed on the robot: guidance does not answer. "
-            "It goes in as soon as guidance does."
-        )
+        return f"Champion {scene.champion} is NOT confirmed on the robot yet. It goes in as soon as guidance answers."
     over = "Session over" if state == "ended" else "Match"
     after = "" if state == "ended" else " Begin goes on after the match."
     return f"{over}: champion {scene.champion} is in service, read back.{after}"

@@ -47,12 +47,18 @@ class Caller(Watch):
         self._read = self._node.create_client(GetParameters, "guidance_node/get_parameters")
 
     def numbers(self) -> list[float]:
-        """Return the nine numbers that guidance holds now; empty where it does not answer."""
-        if not self._read.wait_for_service(timeout_sec=DEADLINE):
-            return []
-        future = self._read.call_async(GetParameters.Request(names=NAMES))
-        self._executor.spin_until_future_complete(future, timeout_sec=DEADLINE)
-        return [value.double_value for value in future.result().values] if future.done() else []
+        """Return the nine numbers that guidance holds now; empty where it does not answer.
+
+        A request that was sent to a server which is gone meanwhile is lost: so it is made again.
+        """
+        end = time.monotonic() + DEADLINE
+        while time.monotonic() < end and self._read.wait_for_service(timeout_sec=DEADLINE):
+            future = self._read.call_async(GetParameters.Request(names=NAMES))
+            self._executor.spin_until_future_complete(future, timeout_sec=2.0)
+            if future.done():
+                return [value.double_value for value in future.result().values]
+            self._read.remove_pending_request(future)
+        return []
 
     def release(self) -> tuple[bool, float]:
         """Make a match call; return whether it was confirmed, and how long its answer took (s)."""
