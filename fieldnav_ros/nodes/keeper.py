@@ -22,7 +22,6 @@ from fieldnav_ros.tuning.session import Session
 from fieldnav_ros.world.layouts import draw
 from fieldnav_ros.yard import Yard
 
-
 CARRYING = 10.0
 """Seconds that somebody takes to carry the robot to its start, as a first guess."""
 DRIVING = 0.5

@@ -81,15 +81,21 @@ text = st.one_of(
 )
 names = st.sampled_from(["e1", "e2", "e3"])
 pose_of_layout = st.builds(Pose, x=st.floats(-1e4, 1e4), y=st.floats(-1e4, 1e4), yaw=st.floats(-100, 100))
+frames_of_requests, limits = st.sampled_from(["map", "map", "odom"]), st.floats(0.01, 600.0)
 requests = st.one_of(
     st.builds(payloads.StopEpisode, episode=names),
-    st.builds(
-        payloads.RunEpisode,
-        episode=names,
-        set=st.just("s"),
-        layout=st.builds(Layout, start=pose_of_layout, goal=pose_of_layout),
-        frame=st.sampled_from(["map", "map", "odom"]),
-        time_limit=st.floats(0.01, 600.0),
+    st.builds(payloads.DriveTo, episode=names, goal=pose_of_layout, frame=frames_of_requests, time_limit=limits),
+    *(
+        st.builds(
+            kind,
+            episode=names,
+            set=st.just("s"),
+            layout=st.builds(Layout, start=pose_of_layout, goal=pose_of_layout),
+            frame=frames_of_requests,
+            time_limit=limits,
+            outcomes=st.sampled_from([None, "judge", "operator"]),
+        )
+        for kind in (payloads.RunEpisode, payloads.ObserveEpisode)
     ),
 ).map(payloads.encode)
 outcomes = st.builds(
