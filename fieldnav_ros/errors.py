@@ -74,6 +74,9 @@ def _sentence(finding: Any) -> str:
     kind, message = finding["type"], finding["msg"]
     if kind in ("extra_forbidden", "invalid_key"):
         return f"{where} is not a known key"
+    if kind == "union_tag_invalid":
+        tag, key = finding["ctx"]["tag"], finding["ctx"]["discriminator"].strip("'")
+        return f"{where}: {key} is {shown(tag)}, which is not known"
     if kind == "missing":
         return f"{where} is missing"
     if kind == "value_error":
@@ -81,4 +84,4 @@ def _sentence(finding: Any) -> str:
         return message if where == "value" else f"{where}: {message}"
     # pydantic words its bounds "Input should be ...", "String should have ..."
     bound = re.sub(r"^\w+ should ", "", message)
-    return f"{where} is {shown(finding['input'])}, must {bound}"
+    return f"{where} is {shown(finding['input'])}, must {clipped(bound, 300)}"

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Annotated, Any, Literal
 
-from pydantic import Field, TypeAdapter, ValidationError
+from pydantic import Field, TypeAdapter, ValidationError, model_validator
 
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.model import Frozen, Layout, Outcome, Positive
@@ -103,6 +103,16 @@ class BatchOpened(Frozen):
     sets: tuple[NamedSet, ...]
     layouts: tuple[Layout, ...]
     runs: tuple[Run, ...]
+
+    @model_validator(mode="after")
+    def _runs_name_what_is_there(self) -> BatchOpened:
+        for run in self.runs:
+            if not (0 <= run.set_index < len(self.sets) and 0 <= run.layout_index < len(self.layouts)):
+                raise ValueError(
+                    f"episode {run.episode_id} is of set {run.set_index} on layout {run.layout_index},"
+                    f" must be of {len(self.sets)} sets and {len(self.layouts)} layouts"
+                )
+        return self
 
 
 class EpisodeScored(Frozen):

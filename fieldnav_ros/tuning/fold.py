@@ -121,6 +121,8 @@ def _generation(state: State, event: ev.GenerationClosed) -> State:
     generations, controls = state.generations, state.controls
     if event.blocks:
         points = tuple(item.unit for item in batch.opened.sets if item.unit is not None)
+        if len(points) != len(event.costs):
+            raise InputError.of("costs of a generation closed", len(event.costs), f"{len(points)}, one for each set")
         generations = (*generations, Generation(points, event.costs))
         if event.control is not None:
             controls = (*controls, Control(event.batch, event.control))

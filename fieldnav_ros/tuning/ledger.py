@@ -273,3 +273,7 @@ def _prepare(path: Path, connection: sqlite3.Connection, new: bool) -> None:
         raise InputError(f"{path}: is no ledger, but another kind of file")
     if schema > SCHEMA:
         raise InputError(f"{path}: has schema {schema}, must be at most {SCHEMA}: a newer version wrote it")
+    # a view or a trigger of somebody else's in the table's place could compute without end
+    made = {sql for (sql,) in _guarded(path, connection, "SELECT sql FROM sqlite_master")}  # type: ignore[misc]
+    if _TABLES[0] not in made or not made <= set(_TABLES):
+        raise InputError(f"{path}: is no ledger: its tables are not those that a ledger has")

@@ -9,7 +9,7 @@ import numpy as np
 import yaml
 from pydantic import Field, ValidationError, model_validator
 
-from fieldnav_ros.errors import InputError, shown
+from fieldnav_ros.errors import InputError, clipped, shown
 from fieldnav_ros.model import Frozen
 from fieldnav_ros.parameters import TABLE, FloatArray, ParameterSet, Scale
 
@@ -64,7 +64,7 @@ class Space(Frozen):
         """Say in one clause how ``other`` departs from this space; None where it does not."""
         if other.names != self.names:
             odd = sorted(set(other.names) ^ set(self.names)) or list(other.names)
-            return f"its parameters differ from the table's at {', '.join(odd)}"
+            return f"its parameters differ from the table's at {', '.join(clipped(name) for name in odd[:4])}"
         for mine, theirs in zip(self.axes, other.axes):
             if mine != theirs:
                 return (
