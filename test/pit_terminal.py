@@ -16,7 +16,7 @@ from collections.abc import Callable, Mapping, Sequence
 from pathlib import Path
 
 ROOT = Path(__file__).resolve().parent.parent
-DEADLINE = 120.0
+DEADLINE = 300.0
 # ECMA-48: control sequences, and the private ones of common terminals in the same form
 CONTROL = re.compile(r"\x1b\[[0-9;?]*[A-Za-z]|\x1b[()=>][0-9A-B]?|\x1b\][^\x07]*\x07")
 HOME = "\x1b[H"
