@@ -16,7 +16,7 @@ from std_msgs.msg import String
 from std_srvs.srv import Trigger
 
 from fieldnav_ros.crowd import Reading
-from fieldnav_ros.errors import FieldnavError
+from fieldnav_ros.errors import FieldnavError, WorkError
 from fieldnav_ros.nodes.base import ERROR, LATCHED, OK, RELIABLE, WARN, FieldnavNode, run, yard_of
 from fieldnav_ros.nodes.floor_clock import FloorClock
 from fieldnav_ros.nodes.in_service import TICK, InService, Steps
@@ -287,7 +287,11 @@ class TunerNode(FieldnavNode):
         return response
 
     def _on_void_last(self, _request: Trigger.Request, response: Trigger.Response) -> Trigger.Response:
-        events = self.session.void(self._running[1].id if self._running else None)
+        try:
+            events = self.session.void(self._running[1].id if self._running else None)
+        except WorkError as error:
+            response.message = str(error)
+            return response
         self.keeper.commit(events)
         voided = any(event.kind == "episode_voided" for event in events)
         if voided:

@@ -127,6 +127,9 @@ def test_only_the_first_report_of_the_chosen_source_counts_and_the_others_are_ke
     site: Site, tmp_path: Path
 ) -> None:
     with tuner(tmp_path, outcomes="operator"):
+        site.wait(lambda: site.status)
+        nothing = site.call(Trigger, "tuner_node/void_last", Trigger.Request())
+        assert (nothing.success, nothing.message) == (False, "there is no last outcome to take back")
         site.begin()
         first = site.wait(lambda: site.running)
         site.report(first.episode, "judge", OutcomeKind.CONTACT)
