@@ -81,6 +81,7 @@ def run_rehearsal(rehearsal: Rehearsal) -> dict[str, Any]:
     began = time.monotonic()
     with Processes(environment) as processes:
         rehearsal.start(processes)
-        summary = pit.run("", "tuner_node", watch_only=False, check=processes.check)
+        farewell = f"The rehearsal is over; what it left is in {rehearsal.folder}."
+        summary = pit.run("", "tuner_node", watch_only=False, check=processes.check, farewell=farewell)
     seconds = round(time.monotonic() - began, 1)
     return {**summary, "ledger": str(rehearsal.ledger), "seconds": seconds, "seed": rehearsal.seed}

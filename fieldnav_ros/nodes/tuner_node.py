@@ -304,7 +304,10 @@ class TunerNode(FieldnavNode):
 
     async def _on_release(self, _request: Trigger.Request, response: Trigger.Response) -> Trigger.Response:
         """Match call: robot stopped, champion back in service, read back; an answer within a second."""
-        self._cut_off(self.session.release() if self.observer is None else [], "cut off by a match call")
+        try:
+            self._cut_off(self.session.release() if self.observer is None else [], "cut off by a match call")
+        except WorkError as error:  # a full disk is no reason to send the robot into a match with another set
+            self.warn("faults", f"the match call could not be recorded: {error}")
         self._message = "match call"
         answer: Future = Future()
         self._script.start(self._match_call(answer))

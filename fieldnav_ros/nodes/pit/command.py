@@ -32,7 +32,9 @@ class Show(Protocol):
         """Show what was heard."""
 
 
-def run(namespace: str, tuner: str, watch_only: bool, check: Callable[[], None] = lambda: None) -> dict[str, Any]:
+def run(
+    namespace: str, tuner: str, watch_only: bool, check: Callable[[], None] = lambda: None, farewell: str = LEFT
+) -> dict[str, Any]:
     """Run until q, a lost terminal or a signal; return the summary. ``check`` is called now and then."""
     try:
         from rich.console import Console
@@ -54,7 +56,7 @@ def run(namespace: str, tuner: str, watch_only: bool, check: Callable[[], None] 
     try:
         with live:
             summary = _loop(namespace, tuner, watch_only, show, check)
-        print(LEFT, flush=True)
+        print(farewell, flush=True)
     except OSError:  # the terminal went away and could not be tidied up
         _leave_terminal()
     return summary
