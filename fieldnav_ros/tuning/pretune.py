@@ -23,9 +23,15 @@ from fieldnav_ros.world.work import Work
 from fieldnav_ros.yard import Yard
 
 MODEL = DEFAULT_MODEL
-POPULATION = 16
-LAYOUTS = (8, 32)
-"""Layouts in a generation: few where the budget is small, so that there are generations enough."""
+POPULATIONS = (10, 16)
+"""Sets in a generation, below LARGE episodes and from there on."""
+LARGE = 10_000
+LAYOUTS = (4, 32)
+"""Layouts in a generation: few where the budget is small, so that there are generations enough.
+
+With 1,875 episodes 10 sets on 4 layouts end at 2.05 and 1.86 s (two seeds), 16 on 8 at 2.21 and 2.16 s, and without
+the easier grades 10 on 8 at 2.27 s (``test/benchmark/sample_efficiency.py`` has the scene).
+"""
 GENERATIONS = 75
 VERDICT_SHARE = 0.1
 
@@ -40,10 +46,11 @@ def pretune_config(yard: Yard, episodes: int, seed: int) -> SessionConfig:
         raise InputError.of("number of episodes", episodes, f"at least {LEAST_EPISODES}")
     stages = [Stage(grade=name, time_limit=grade.time_limit) for name, grade in yard.grades.items()]
     last = stages[-1]
-    places = min(max(episodes // (GENERATIONS * POPULATION), LAYOUTS[0]), LAYOUTS[1])
+    population = POPULATIONS[episodes >= LARGE]
+    places = min(max(episodes // (GENERATIONS * population), LAYOUTS[0]), LAYOUTS[1])
     return SessionConfig(
         seed=seed, floor_time_s=episodes * last.time_limit, episodes=episodes, grade=last.grade,
-        time_limit=last.time_limit, lead_in=tuple(stages[:-1]), population=POPULATION, layouts=places, control=False,
+        time_limit=last.time_limit, lead_in=tuple(stages[:-1]), population=population, layouts=places, control=False,
         rounds=1, verdict_share=VERDICT_SHARE, pairs_at_once=100, least_pairs=8, reset_guess_s=0.0,
     )  # fmt: skip
 
