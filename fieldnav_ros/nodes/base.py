@@ -188,6 +188,8 @@ def _run(
         while not stop:
             executor.spin_once(timeout_sec=0.1)
         return 0
+    except FieldnavError:
+        raise  # said in one sentence by who started this
     except Exception as error:  # noqa: BLE001  # whatever went wrong in a callback, the robot is stopped below
         where = traceback.extract_tb(error.__traceback__)[-1]
         node.log.fatal(

@@ -31,6 +31,7 @@ from fieldnav_ros.nodes.base import (
     run,
     yard_of,
 )
+from fieldnav_ros.nodes.claim import CLAIM, Lease
 from fieldnav_ros.nodes.declare import tunable_settings
 from fieldnav_ros.nodes.guidance_settings import SETTINGS
 from fieldnav_ros.nodes.payloads import DriveTo, ObserveEpisode, RunEpisode, decode_outcome, decode_request
@@ -41,7 +42,7 @@ from fieldnav_ros.yard import Arrival, Yard
 
 STOP_REPEATS = 5
 """How often the zero command is repeated where nothing is left to do: then cmd_vel is free for others."""
-_TUNABLE = {setting.name: setting for setting in SETTINGS if setting.live}
+_TUNABLE = {setting.name: setting for setting in SETTINGS if setting.live and setting.name != CLAIM}
 
 
 class GuidanceNode(FieldnavNode):
@@ -57,7 +58,7 @@ class GuidanceNode(FieldnavNode):
         self._running: RunEpisode | DriveTo | None = None
         self._floor, self._arrival, self._robot = yard.floor, self._arrival_of(yard), self._robot_of(yard)
         self.pilot = self._make_pilot(yard)
-        self._ended = ""
+        self._ended, self._lease = "", Lease()
         self._zeros_left = 0
         self._moving_on_said = False
         self._order: Order | None = None
@@ -271,6 +272,9 @@ class GuidanceNode(FieldnavNode):
     # parameters, pictures, diagnostics
 
     def _on_set(self, parameters: list[Parameter]) -> SetParametersResult:
+        claim = next((parameter.value for parameter in parameters if parameter.name == CLAIM), None)
+        if claim is not None and (reason := self._lease.refusal(claim)):
+            return SetParametersResult(successful=False, reason=reason)
         episode = self.pilot.episode
         if episode is not None and any(parameter.name in _TUNABLE for parameter in parameters):
             return SetParametersResult(
@@ -286,6 +290,9 @@ class GuidanceNode(FieldnavNode):
 
     def _post_set(self, parameters: list[Parameter]) -> None:
         changed = {parameter.name: parameter.value for parameter in parameters if parameter.name in _TUNABLE}
+        for parameter in parameters:
+            if parameter.name == CLAIM:
+                self._lease.take(parameter.value)
         self.settings.update(changed)
         self.pilot.model = self.settings["field.model"]
         self.pilot.numbers = ParameterSet.from_ros(
@@ -310,6 +317,7 @@ class GuidanceNode(FieldnavNode):
             "episode": episode or "",
             "model": self.pilot.model,
             "held": self.pilot.held,
+            "tuned_by": self._lease.holder,
             "obstacles": order.view.obstacles.x.shape[0] if order else "",
             "obstacle_lag_s": f"{order.view.lag:.3f}" if order else "",
         }

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from fieldnav_ros.guide import DEFAULT_MODEL, MODELS
 from fieldnav_ros.nodes.base import MATCH_STAMPS, RELIABLE_INPUT, YARD
+from fieldnav_ros.nodes.claim import CLAIM
 from fieldnav_ros.nodes.convert import POSE_TYPES
 from fieldnav_ros.nodes.declare import Setting, tunable_settings
 
@@ -44,6 +45,7 @@ SETTINGS: tuple[Setting, ...] = (
     RELIABLE_INPUT,
     Setting("field_rate", 2.0, "pictures of the field per second while somebody looks; 0: none", 0.0, 10.0),
     Setting("field_arrows", 24.0, "arrows along the floor's longer side in such a picture", 4.0, 60.0),
+    Setting(CLAIM, "", "which tuner sets the numbers, in its own words; it writes this itself", live=True),
     Setting("field.model", DEFAULT_MODEL, "which field guides", choices=MODELS, live=True),
     *tunable_settings(),
 )

@@ -43,7 +43,7 @@ class InService:
     def __init__(self, node: FieldnavNode, keeper: Keeper, guidance: str, stop: Callable[[], None]) -> None:
         """``stop`` sends the word that ends whatever episode runs."""
         self._node, self._keeper, self._stop, self.guidance = node, keeper, stop, guidance
-        self.link = ServiceLink(node, guidance, PATIENCE)
+        self.link = ServiceLink(node, guidance, PATIENCE, node.settings["ledger"])
         self.confirmed = ""
         """Id of the set that was read back last; empty where that is not sure any more."""
         self._values: tuple[float, ...] = ()
@@ -54,6 +54,7 @@ class InService:
             self.confirmed = ""
             tell()
             yield from pause(0.2)
+        yield from self.link.claim.take()
 
     def put(self, set_id: str, parameters: ParameterSet) -> Generator[Wait, Any, bool]:
         """Put a set in service and confirm it; False where that must be tried again."""
@@ -66,6 +67,8 @@ class InService:
             self.confirmed = ""
             yield from self.link.put(parameters)
         except RefusedError as error:
+            if self.link.claim.lost_by(str(error)):
+                return False
             node.warn("sets_refused", f"guidance refused set {set_id}: {error}")
             self._stop()
             yield from pause(0.1)
@@ -100,8 +103,9 @@ class InService:
         self.confirmed = ""
         try:
             yield from self.link.put(champion.parameters, min(CALL_PATIENCE, max(TICK, end - time.monotonic())))
-        except RefusedError:
-            self._stop()  # the word to stop and the numbers go different ways: guidance had not heard it yet
+        except RefusedError as error:
+            if not self.link.claim.lost_by(str(error)):
+                self._stop()  # the word to stop and the numbers go different ways: guidance had not heard it yet
             return False
         except LateError:
             return False

@@ -12,6 +12,7 @@ from rclpy.node import Node
 
 from fieldnav_ros.errors import WorkError
 from fieldnav_ros.guide import DEFAULT_MODEL
+from fieldnav_ros.nodes.claim import Claim, claim_parameter
 from fieldnav_ros.nodes.script import LateError, Wait
 from fieldnav_ros.parameters import TABLE, ParameterSet
 
@@ -27,11 +28,15 @@ class RefusedError(Exception):
 class ServiceLink:
     """Client of the guidance node's parameter services. Its methods are steps of a ``Script``."""
 
-    def __init__(self, node: Node, guidance: str, patience: float) -> None:
-        """``guidance``: name of the node, relative to ``node``'s namespace; ``patience``: s to wait for an answer."""
+    def __init__(self, node: Node, guidance: str, patience: float, ledger: str) -> None:
+        """``guidance``: name of the node, relative to ``node``'s namespace; ``patience``: s to wait for an answer.
+
+        The claim on guidance is made in the name of ``ledger``.
+        """
         self._name, self._patience = guidance, patience
         self.model = DEFAULT_MODEL
         self._set = node.create_client(SetParametersAtomically, f"{guidance}/set_parameters_atomically")
+        self.claim = Claim(node, self._set, ledger)
         self._get = node.create_client(GetParameters, f"{guidance}/get_parameters")
 
     def there(self) -> bool:
@@ -63,6 +68,7 @@ class ServiceLink:
                 )
                 for name, value in zip(NAMES, wanted)
             ]
+            + [claim_parameter(self.claim.text)]
         )
         answer = yield from self._call(self._set, request, patience)
         if not answer.result.successful:

@@ -41,7 +41,7 @@ def spoilt_bytes(draw: Any, files: list[bytes], nasty: list[bytes]) -> bytes:
             )
         )
         data = data[:start] + piece + data[end:]
-    return data
+    return bytes(data)
 
 
 scalars = st.one_of(
