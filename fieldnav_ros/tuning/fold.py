@@ -53,6 +53,10 @@ def _begun(state: State, event: ev.SessionBegun) -> State:
 
 
 def _opened(state: State, event: ev.BatchOpened) -> State:
+    if (event.phase == "verdict") != (state.round is not None):
+        raise InputError(f"batch_opened of a {event.phase} came in the other phase")
+    if event.phase == "verdict" and len(event.sets) != 2:
+        raise InputError.of("sets of a verdict's batch_opened", len(event.sets), "2: champion and challenger")
     following = max((run.episode_id for run in event.runs), default=0) + 1
     return replace(
         state,
@@ -142,6 +146,8 @@ def _stage(state: State, event: ev.StageBegun) -> State:
 
 
 def _named(state: State, event: ev.ChallengerNamed) -> State:
+    if state.batch is not None:
+        raise InputError("challenger_named came while a batch was open")
     bound = cost_bound(state.stage.time_limit)
     return replace(
         state,
