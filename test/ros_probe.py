@@ -23,9 +23,12 @@ Self = TypeVar("Self", bound="Probe")
 class NodeProcess:
     """One node in a process of its own; a context manager that leaves nothing behind."""
 
-    def __init__(self, name: str, words: Sequence[str] = (), files: Sequence[Path] = ()) -> None:
+    def __init__(
+        self, name: str, words: Sequence[str] = (), files: Sequence[Path] = (), namespace: str = ""
+    ) -> None:
         given = [word for file in files for word in ("--params-file", str(file))]
         given += [word for value in words for word in ("-p", value)]
+        given += ["-r", f"__ns:={namespace}"] if namespace else []
         self.child = subprocess.Popen(
             [sys.executable, "-m", f"fieldnav_ros.nodes.{name}", "--ros-args", *given], stdin=subprocess.DEVNULL
         )
