@@ -50,6 +50,8 @@ class Keeper:
         if settings["mode"] == "tune":
             self._check(config)
             self.commit(self.session.advance())
+        if not self._champion_is_written():
+            self._write_champion()
 
     def commit(self, events: Sequence[Event]) -> None:
         """Store events, then let them take effect; the champion's file follows the champion."""
@@ -102,6 +104,13 @@ class Keeper:
                 f"{self._settings['ledger']}: the session's {name}", getattr(self.session.config, name),
                 f"{getattr(config, name)!r} as asked for now; name another ledger or ask for the same session",
             )  # fmt: skip
+
+    def _champion_is_written(self) -> bool:
+        """Tell whether the file holds the champion: a process may have died, or a disk been full, in between."""
+        try:
+            return read_parameters(self._settings["champion_file"]) == self.session.champion.parameters
+        except InputError:
+            return False
 
     def _write_champion(self) -> None:
         champion = self.session.champion

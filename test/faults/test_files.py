@@ -18,10 +18,11 @@ from faults.conftest import Tell
 from faults.spoil import NASTY, as_yaml, nothing_run, spoilt_bytes, spoilt_tree
 from hypothesis import HealthCheck, Phase, given, settings
 
-from fieldnav_ros.errors import FieldnavError, InputError
+from fieldnav_ros.errors import FieldnavError, InputError, WorkError
 from fieldnav_ros.parameters import DEFAULTS
-from fieldnav_ros.params_file import parameters_text, read_model, read_parameters
+from fieldnav_ros.params_file import parameters_text, read_model, read_parameters, write_parameters
 from fieldnav_ros.resources import config_path
+from fieldnav_ros.tuning.ledger import Ledger
 from fieldnav_ros.tuning.prior_file import load_prior
 from fieldnav_ros.tuning.space import Prior, dump_prior
 from fieldnav_ros.world.layouts import draw
@@ -122,3 +123,20 @@ def test_the_watch_over_reading_sees_code_that_runs(fast: Path) -> None:
     """The same tag with the loader that trusts it: the tests above would notice."""
     with pytest.raises(AssertionError, match=r"os\.mkdir"), nothing_run():
         yaml.unsafe_load(f"!!python/object/apply:os.mkdir ['{fast / 'ran'}']")
+
+
+def test_writing_follows_no_link(fast: Path, tell: Tell) -> None:
+    """Links that somebody laid where the champion's file and the ledger's lock go: what they point to stays."""
+    kept = fast / "kept"
+    kept.write_text("precious")
+    champion, lock = fast / "champion.yaml", fast / "session.ledger.lock"
+    champion.symlink_to(kept)
+    lock.symlink_to(kept)
+    write_parameters(champion, DEFAULTS, "about", "published")
+    assert read_parameters(champion) == DEFAULTS
+    assert not champion.is_symlink()
+    with pytest.raises(WorkError, match="cannot be locked"):
+        Ledger.open(fast / "session.ledger")
+    assert kept.read_text() == "precious"
+    assert sorted(os.listdir(fast)) == ["champion.yaml", "kept", "session.ledger.lock"]
+    tell("writing: links in the way", 2, "not followed")

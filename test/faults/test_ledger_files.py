@@ -15,7 +15,7 @@ from typing import Any
 import pytest
 from faults.conftest import Tell
 from faults.spoil import spoilt_bytes, spoilt_tree
-from faults.test_files import fuzzed, held
+from faults.test_files import EXAMPLES, fuzzed, held
 from hypothesis import given
 from hypothesis import strategies as st
 from tuning.synthetic_floor import draw, finish, started
@@ -90,7 +90,7 @@ def _too_long(*_: object) -> None:
 def in_time() -> Iterator[None]:
     """Nothing here may hang: so much time ends the test."""
     signal.signal(signal.SIGALRM, _too_long)
-    signal.alarm(90)
+    signal.alarm(90 * max(1, EXAMPLES // 200))
     yield
     signal.alarm(0)
 
