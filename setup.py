@@ -11,7 +11,7 @@ from setuptools import find_packages, setup
 NAME = "fieldnav_ros"
 SHARE = f"share/{NAME}"
 NODES = ("guidance_node", "tuner_node", "simulator_node", "judge_node", "recorder_node")
-EXECUTABLES = {"fieldnav": f"{NAME}.cli:main", **{node: f"{NAME}.nodes.{node}:main" for node in NODES}}
+EXECUTABLES = {name: f"{NAME}.entry:{name}" for name in ("fieldnav", *NODES)}
 
 # ROS 2 as wheels, for machines without a ROS installation (x86-64, CPython 3.10 to 3.14). One distribution per
 # environment. rclpy does not depend on an rmw of its own accord, so it is named here.

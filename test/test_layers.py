@@ -26,6 +26,7 @@ LAYERS = (
     {"report"},
     {"nodes"},
     {"cli"},
+    {"entry"},
 )
 RANK = {name: rank for rank, layer in enumerate(LAYERS) for name in layer}
 SHELL = {"nodes", "cli"}
