@@ -1,6 +1,6 @@
 """Files from outside are data: whatever is in them, a reader gives values or one sentence, and runs nothing.
 
-200 examples of each kind in the suite, always the same ones. ``FIELDNAV_FUZZ=5000 pytest test/faults/test_files.py``
+100 examples of each kind in the suite, always the same ones. ``FIELDNAV_FUZZ=5000 pytest test/faults/test_files.py``
 tries so many, and others each time.
 """
 
@@ -20,7 +20,7 @@ from hypothesis import HealthCheck, Phase, given, settings
 
 from fieldnav_ros.errors import FieldnavError, InputError, WorkError
 from fieldnav_ros.parameters import DEFAULTS
-from fieldnav_ros.params_file import parameters_text, read_model, read_parameters, write_parameters
+from fieldnav_ros.params_file import parameters_text, read_parameters, write_parameters
 from fieldnav_ros.resources import config_path
 from fieldnav_ros.tuning.ledger import Ledger
 from fieldnav_ros.tuning.prior_file import load_prior
@@ -28,7 +28,7 @@ from fieldnav_ros.tuning.space import Prior, dump_prior
 from fieldnav_ros.world.layouts import draw
 from fieldnav_ros.yard import load_yard
 
-EXAMPLES = int(os.environ.get("FIELDNAV_FUZZ", "200"))
+EXAMPLES = int(os.environ.get("FIELDNAV_FUZZ", "100"))
 LONGEST = 700
 """Most characters of a refusal beyond the file's name: a sentence, not a dump."""
 
@@ -36,7 +36,7 @@ LONGEST = 700
 def fuzzed(function: Callable[..., None]) -> Callable[..., None]:
     """Settings of all tests here; shrinking is left to who looks into a failure."""
     chosen = settings(
-        max_examples=EXAMPLES, deadline=None, derandomize=EXAMPLES <= 200, database=None,
+        max_examples=EXAMPLES, deadline=None, derandomize=EXAMPLES <= 100, database=None,
         phases=[Phase.explicit, Phase.generate], suppress_health_check=list(HealthCheck),
     )  # fmt: skip
     return chosen(function)
@@ -49,17 +49,11 @@ def read_yard(path: Path) -> None:
         draw(yard, grade, np.random.default_rng(1))
 
 
-def read_set(path: Path) -> None:
-    """Read a parameter file as the tuner and ``survey`` do."""
-    read_parameters(path)
-    read_model(path)
-
-
 YARDS = [config_path(f"yards/{name}.yaml").read_bytes() for name in ("parcel_yard", "rehearsal_floor")]
 SETS = [config_path("guidance.yaml").read_bytes(), parameters_text(DEFAULTS, "about", "published").encode()]
 PRIORS = [dump_prior(Prior.of(np.full(9, 0.5), 0.04 * np.eye(9), "a test", 100)).encode()]
 READERS: dict[str, tuple[Callable[[Path], object], list[bytes]]] = {
-    "yard": (read_yard, YARDS), "parameter file": (read_set, SETS), "prior": (load_prior, PRIORS),
+    "yard": (read_yard, YARDS), "parameter file": (read_parameters, SETS), "prior": (load_prior, PRIORS),
 }  # fmt: skip
 
 

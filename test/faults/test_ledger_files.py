@@ -1,6 +1,6 @@
 """Ledgers from outside are data: spoilt, forged or hostile, they are read or refused in one sentence.
 
-``FIELDNAV_FUZZ=5000 pytest test/faults/test_ledger_files.py`` tries so many of each kind; 200 in the suite.
+``FIELDNAV_FUZZ=5000 pytest test/faults/test_ledger_files.py`` tries so many of each kind; 100 in the suite.
 """
 
 from __future__ import annotations
@@ -90,7 +90,7 @@ def _too_long(*_: object) -> None:
 def in_time() -> Iterator[None]:
     """Nothing here may hang: so much time ends the test."""
     signal.signal(signal.SIGALRM, _too_long)
-    signal.alarm(90 * max(1, EXAMPLES // 200))
+    signal.alarm(90 * max(1, EXAMPLES // 100))
     yield
     signal.alarm(0)
 

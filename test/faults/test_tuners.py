@@ -77,7 +77,7 @@ def test_a_second_tuner_is_refused_and_disturbs_nothing_and_a_dead_ones_claim_ru
     site: Watcher, tmp_path: Path, tell: Tell
 ) -> None:
     """On the same ledger and on the same guidance node; the first is then killed, as is guidance."""
-    with tuner(tmp_path, outcomes="referee") as first:
+    with tuner(tmp_path, outcomes="referee", outcome_deadline=600.0) as first:
         site.begin()
         running = site.wait(lambda: site.running)
         numbers = site.numbers()
@@ -121,6 +121,7 @@ def test_a_strangers_number_is_refused_in_an_episode_and_found_said_and_recorded
     """Between episodes means here: the tuner waits for a robot to be carried to its start."""
     words = {"outcomes": "referee", "return": "operator", "starts": "marks", "start_rest": 0.2}
     with tuner(tmp_path, **words):
+        site.wait(lambda: site.status and site.status.in_service)
         site.begin()
         site.wait(lambda: site.status and site.status.state == "placing" and site.status.in_service)
         assert stranger_sets(site, "field.turn_radius", 0.21) == ""
