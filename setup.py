@@ -42,7 +42,6 @@ EXTRAS["test"] = [
     *EXTRAS["pit"],
     *EXTRAS["cluster"],
     "pytest>=8",
-    "pytest-xdist>=3.5",
     "hypothesis",
     "jsonschema",
     "mcap-ros2-support",

@@ -10,7 +10,7 @@ cd "$source_dir"
 
 # A ROS installation brings pytest plugins of its own, which not every pytest can load.
 if [ -n "${ROS_DISTRO:-}" ]; then
-    export PYTEST_DISABLE_PLUGIN_AUTOLOAD=1 PYTEST_ADDOPTS="${PYTEST_ADDOPTS:-} -p _hypothesis_pytestplugin -p xdist.plugin"
+    export PYTEST_DISABLE_PLUGIN_AUTOLOAD=1 PYTEST_ADDOPTS="${PYTEST_ADDOPTS:-} -p _hypothesis_pytestplugin"
 fi
 
 result=0
@@ -23,6 +23,18 @@ else
     say "types are not checked here: that takes numpy 2.4 or later"
 fi
 [ "$result" -eq 0 ] || say "ruff or mypy found faults (above); running the tests all the same"
-# Two processes: half of the time goes by waiting for nodes to find each other. Each has a ROS domain of its own.
-pytest --numprocesses "${FIELDNAV_TEST_PROCESSES:-2}" --dist loadfile "$@" || result=$?
+# In two processes beside each other, as half of the time goes by waiting for nodes to find each other: each has a ROS
+# domain of its own. What the second says comes after the first has ended.
+if [ "$#" -gt 0 ]; then
+    pytest "$@" || result=$?
+else
+    log=$(mktemp)
+    trap 'rm -f "$log"' EXIT
+    pytest test/nodes >"$log" 2>&1 &
+    nodes=$!
+    trap 'rm -f "$log"; kill "$nodes" 2>/dev/null || true' EXIT
+    pytest --ignore test/nodes || result=$?
+    wait "$nodes" || result=$?
+    cat "$log"
+fi
 exit "$result"

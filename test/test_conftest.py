@@ -47,7 +47,7 @@ def run_pytest(root: Path, tmp_path: Path) -> Runner:
         return subprocess.run(
             [sys.executable, "-m", "pytest", "-s", "-rs", "-p", "no:cacheprovider", *options],
             cwd=tmp_path,
-            env={**os.environ, "CI": ci, "PYTEST_ADDOPTS": "", "PYTHONPATH": str(root)},
+            env={**os.environ, "CI": ci, "PYTEST_ADDOPTS": "", "PYTHONPATH": f"{root}:{root / 'test'}"},
             capture_output=True,
             text=True,
             timeout=60,
