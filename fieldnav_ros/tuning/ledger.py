@@ -265,7 +265,7 @@ def _prepare(path: Path, connection: sqlite3.Connection, new: bool) -> None:
                 " copy it together with its -journal file to a folder of your own"
             ) from error
         raise WorkError(f"{path}: cannot be written: {error}") from error
-    except sqlite3.DatabaseError as error:
+    except (sqlite3.DatabaseError, ValueError) as error:  # ValueError: SQLite quotes what is no UTF-8
         raise InputError(f"{path}: is no ledger: {error}") from error
     [(application,)] = _guarded(path, connection, "PRAGMA application_id")  # type: ignore[misc]  # one column
     [(schema,)] = _guarded(path, connection, "PRAGMA user_version")  # type: ignore[misc]  # one column

@@ -202,3 +202,14 @@ def test_a_hostile_ledger_is_refused_in_a_sentence(
         list(ledger.events())
     assert str(caught.value).startswith(str(path))
     assert str(caught.value).isprintable()
+
+
+def test_a_schema_with_a_byte_that_is_no_text_is_refused_in_a_sentence(fast: Path, empty: bytes) -> None:
+    """At every byte of the table's definition; SQLite quotes what it cannot read."""
+    path, first = fast / "a.ledger", empty.index(b"CREATE TABLE events")
+    for place in range(first, first + len(b"CREATE TABLE events (") + 60):
+        path.write_bytes(empty[:place] + b"\xd6" + empty[place + 1 :])
+        for how in (Ledger.open, Ledger.read):
+            with pytest.raises(FieldnavError) as caught:
+                how(path)
+            assert str(caught.value).isprintable()
