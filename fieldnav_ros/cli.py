@@ -75,7 +75,7 @@ def build_parser() -> argparse.ArgumentParser:
     demo = _verb(verbs, "demo", _demo, "real nodes in simulation retune a robot on the parcel yard")
     demo.add_argument("--out", type=Path, help="folder for the files (default: fieldnav_demo, numbered if it exists)")
     demo.add_argument(
-        "--floor-time", type=number("--floor-time", 1, 600), default=50.0, metavar="MIN",
+        "--floor-time", type=number("--floor-time", 1, 600), default=45.0, metavar="MIN",
         help="simulated minutes of floor time (default: %(default)g)",
     )  # fmt: skip
     demo.add_argument(

@@ -107,7 +107,7 @@ def main() -> None:
     given = parser.parse_args()
     PICTURES.mkdir(exist_ok=True)
     with tempfile.TemporaryDirectory() as folder:
-        ledger = given.ledger or Path(run_demo(Path(folder) / "demo", 50.0, 1)["ledger"])
+        ledger = given.ledger or Path(run_demo(Path(folder) / "demo", 45.0, 1)["ledger"])
         page = Path(folder) / "report.html"
         record = write_report(ledger, page)
         write_fields(record, PICTURES / MADE[0], PICTURES / MADE[1])

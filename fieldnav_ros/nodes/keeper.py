@@ -81,6 +81,8 @@ class Keeper:
             time_limit=self._yard.grade(settings["grade"]).time_limit,
             rounds=settings["rounds"],
             verdict_share=settings["verdict_share"],
+            layouts=settings["layouts"],
+            sigma=settings["first_step"],
             reset_guess_s=self._reset_guess(),
         )
 

@@ -23,6 +23,8 @@ SETTINGS: tuple[Setting, ...] = (
             "are not paced", choices=("wall", "pose", "episode")),
     Setting("rounds", 1, "most verdicts in the session; more share the 5 % error among them", 1, 16),
     Setting("verdict_share", 0.35, "share of the floor time kept for the verdict", 0.05, 0.95),
+    Setting("layouts", 4, "layouts of a generation, the same for all its sets", 1, 100),
+    Setting("first_step", 0.15, "first step of a search without a prior, as a share of each range", 0.01, 0.5),
     Setting("place", "", "where the session is held, for the record"),
     Setting("begin", False, "begin at once, without waiting for the service ~/begin"),
     Setting("outcomes", "judge", "whose outcomes count: judge (judge_node), referee (the stack's own) or operator",
