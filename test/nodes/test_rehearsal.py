@@ -81,7 +81,8 @@ def test_a_session_from_begin_to_match_call_through_a_terminal_that_is_lost_on_t
     assert {int(number) for number in judged} == kept
     # the plan was kept, by the poses' own clock
     assert seconds <= 60.0 * FLOOR_TIME + TOLERANCE
-    assert session.state.floor_used_s == pytest.approx(seconds, abs=TOLERANCE / 3)
+    # what the terminals took to show the end is no floor time, so there is no bound from below
+    assert 0.0 < session.state.floor_used_s <= seconds + TOLERANCE / 3
     assert session.state.ended is not None
     if session.state.ended == FLOOR_TIME_UP:
         assert seconds >= 60.0 * FLOOR_TIME - TOLERANCE

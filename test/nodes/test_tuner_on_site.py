@@ -159,6 +159,7 @@ def test_in_a_match_goals_are_judged_and_recorded_and_no_number_changes(site: Si
     before = site.numbers()
     with tuner(tmp_path, mode="observe"):
         site.wait(lambda: site.status and site.status.state == "observing" and site.status.pose_age is not None)
+        site.wait(lambda: site.status and site.status.in_service == "initial")
         assert not site.call(Trigger, "tuner_node/begin", Trigger.Request()).success
         site.goal.publish(pose_message(2.0, 0.8, 0.0, "map", site.now()))
         request = site.wait(lambda: [item for item in site.requests if isinstance(item, ObserveEpisode)])[0]
