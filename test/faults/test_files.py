@@ -1,6 +1,6 @@
 """Files from outside are data: whatever is in them, a reader gives values or one sentence, and runs nothing.
 
-100 examples of each kind in the suite, always the same ones. ``FIELDNAV_FUZZ=5000 pytest test/faults/test_files.py``
+40 examples of each kind in the suite, always the same ones. ``FIELDNAV_FUZZ=5000 pytest test/faults/test_files.py``
 tries so many, and others each time.
 """
 
@@ -28,7 +28,7 @@ from fieldnav_ros.tuning.space import Prior, dump_prior
 from fieldnav_ros.world.layouts import draw
 from fieldnav_ros.yard import load_yard
 
-EXAMPLES = int(os.environ.get("FIELDNAV_FUZZ", "100"))
+EXAMPLES = int(os.environ.get("FIELDNAV_FUZZ", "40"))
 LONGEST = 700
 """Most characters of a refusal beyond the file's name: a sentence, not a dump."""
 

@@ -1,6 +1,6 @@
 """Ledgers from outside are data: spoilt, forged or hostile, they are read or refused in one sentence.
 
-``FIELDNAV_FUZZ=5000 pytest test/faults/test_ledger_files.py`` tries so many of each kind; 100 in the suite.
+``FIELDNAV_FUZZ=5000 pytest test/faults/test_ledger_files.py`` tries so many of each kind; 40 in the suite.
 """
 
 from __future__ import annotations

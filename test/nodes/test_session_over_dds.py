@@ -34,7 +34,7 @@ from fieldnav_ros.tuning.ledger import Ledger
 from fieldnav_ros.tuning.session import Session
 
 pytestmark = pytest.mark.ros
-FLOOR_TIME, SEED = 4.0, 5
+FLOOR_TIME, SEED = 3.0, 5
 DEADLINE = 120.0
 WORLD = ("simulator_node", "judge_node", "guidance_node")
 

@@ -17,8 +17,7 @@ from fieldnav_ros.report.pictures import browse, find_browser, write_top
 
 A4_PX = 680  # 210 mm less margins of 15 mm, at 96 px an inch
 FRAMES = ((1280, "screen"), (400, "screen"), (A4_PX, "print"))
-PAGES = [("accepted", ("kept", "empty", "by_simulation")), ("by_simulation", ()), ("troubled", ()), ("hostile", ()),
-         ("huge_evidence", ()), ("empty", ()), ("only_failures", ())]  # fmt: skip
+PAGES = [("accepted", ("kept", "empty", "by_simulation")), ("troubled", ()), ("hostile", ()), ("empty", ())]
 
 if find_browser() is None and os.environ.get("CI", "").lower() not in {"1", "true"}:
     pytest.skip("no Chromium on this machine", allow_module_level=True)
