@@ -8,7 +8,8 @@ the distance left (K_p) allow.
 
 from __future__ import annotations
 
-from typing import Any
+import math
+from typing import Any, Protocol
 
 import numpy as np
 
@@ -16,9 +17,25 @@ from fieldnav_ros.model import Robot
 from fieldnav_ros.parameters import Numbers
 
 
+class Place(Protocol):
+    """Whatever has a place on the floor (m) and a yaw (rad)."""
+
+    @property
+    def x(self) -> float: ...  # noqa: D102  (said above)
+    @property
+    def y(self) -> float: ...  # noqa: D102
+    @property
+    def yaw(self) -> float: ...  # noqa: D102
+
+
 def wrap(angle: Any) -> Any:
     """Return angles (rad) brought into [-pi, pi)."""
     return angle - 2.0 * np.pi * np.floor(angle / (2.0 * np.pi) + 0.5)
+
+
+def apart(one: Place, other: Place) -> tuple[float, float]:
+    """Return how far ``other`` is from ``one`` (m), and the turn from the one's yaw to the other's (rad, [-pi, pi))."""
+    return math.hypot(other.x - one.x, other.y - one.y), float(wrap(other.yaw - one.yaw))
 
 
 class DriveLaw:
@@ -53,11 +70,6 @@ class DriveLaw:
         speed = np.maximum(np.minimum(np.minimum(by_wheels, by_side), self._homing), 0.0)
         turn = self._bend * speed + np.copysign(steer, error)
         return speed, np.minimum(np.maximum(turn, -self._most_turn), self._most_turn)
-
-
-def drive(error: Any, bend: Any, distance: Any, numbers: Numbers, robot: Robot, ease: float = 0.0) -> tuple[Any, Any]:
-    """Return speed (m/s) and turn rate (rad/s) by ``DriveLaw``, each (N,)."""
-    return DriveLaw(bend, distance, numbers, robot, ease)(error)
 
 
 def limit_wheels(speed: Any, turn: Any, robot: Robot) -> tuple[Any, Any]:

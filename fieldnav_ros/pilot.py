@@ -13,7 +13,7 @@ from typing import NamedTuple
 import numpy as np
 
 from fieldnav_ros.crowd import NANO, Crowd, Reading, View
-from fieldnav_ros.drive import wrap
+from fieldnav_ros.drive import apart
 from fieldnav_ros.guide import Memory, Senses, guide
 from fieldnav_ros.model import Pose, Robot
 from fieldnav_ros.parameters import Numbers
@@ -129,7 +129,7 @@ class Pilot:
         self._last, self._last_moment = reading, moment
         if before is not None and self._jumped(before, reading):
             self._start_anew(keep_pose=True)
-            far = math.hypot(reading.x - before.x, reading.y - before.y)
+            far, _ = apart(before, reading)
             return self._stand(Halt("pose_jump", f"the pose jumped by {far:.2f} m, further than the robot can drive"))
         if not repeated:
             gap = self._advance(before, reading)
@@ -228,9 +228,8 @@ class Pilot:
     def _jumped(self, before: Reading, reading: Reading) -> bool:
         dt = (reading.stamp - before.stamp) / NANO
         reach = 1.5 * self.rules.robot.wheel_speed * dt
-        turn = abs(float(wrap(reading.yaw - before.yaw)))
-        far = math.hypot(reading.x - before.x, reading.y - before.y)
-        return far > reach + JUMP_SLACK or turn > 2.0 * reach / self.rules.robot.track + JUMP_SLACK_YAW
+        far, turn = apart(before, reading)
+        return far > reach + JUMP_SLACK or abs(turn) > 2.0 * reach / self.rules.robot.track + JUMP_SLACK_YAW
 
     def _advance(self, before: Reading | None, reading: Reading) -> Halt | None:
         """Let time pass from the last pose to this one; a halt if that was too long and the robot was not told."""
@@ -244,11 +243,11 @@ class Pilot:
 
     def _arrival(self, reading: Reading, goal: Pose) -> Halt | None:
         allowed = self.rules.arrival
-        far = math.hypot(reading.x - goal.x, reading.y - goal.y) / allowed.position
-        turned = abs(float(wrap(reading.yaw - goal.yaw))) / allowed.heading
-        if max(far, turned) <= 1.0:
+        far, turn = apart(goal, reading)
+        off = max(far / allowed.position, abs(turn) / allowed.heading)
+        if off <= 1.0:
             self._arrived = True
-        elif self._stay and max(far, turned) > COASTED:
+        elif self._stay and off > COASTED:
             self._arrived = False  # it rolled on after the stop: once more
         return Halt("arrived", "arrived, waiting for the next goal", fault=False) if self._arrived else None
 

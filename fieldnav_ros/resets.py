@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from typing import NamedTuple
 
 from fieldnav_ros.crowd import NANO, Reading
-from fieldnav_ros.drive import wrap
+from fieldnav_ros.drive import apart, wrap
 from fieldnav_ros.model import Pose
 
 STILL = 0.02
@@ -44,10 +44,7 @@ class Placing:
     @property
     def off(self) -> Off | None:
         """How far off the newest pose is; None before any."""
-        last, start = self._last, self._start
-        if last is None:
-            return None
-        return Off(math.hypot(last.x - start.x, last.y - start.y), float(wrap(start.yaw - last.yaw)))
+        return None if self._last is None else Off(*apart(self._last, self._start))
 
     def look(self, reading: Reading) -> bool:
         """Take a pose; tell whether the robot has stood at the start for as long as it must."""
@@ -66,8 +63,8 @@ class Placing:
         return off is not None and off.distance <= self._slack.position and abs(off.turn) <= self._slack.heading
 
     def _moved(self, first: Reading, now: Reading) -> bool:
-        far = math.hypot(now.x - first.x, now.y - first.y)
-        return far > STILL or abs(float(wrap(now.yaw - first.yaw))) > STILL_TURN
+        far, turn = apart(first, now)
+        return far > STILL or abs(turn) > STILL_TURN
 
 
 def where(start: Pose, mark: str | None) -> str:

@@ -7,7 +7,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from fieldnav_ros.drive import drive, limit_change, limit_wheels, wrap
+from fieldnav_ros.drive import DriveLaw, limit_change, limit_wheels, wrap
 from fieldnav_ros.model import Robot
 from fieldnav_ros.parameters import DEFAULTS, TABLE, Numbers
 
@@ -23,7 +23,7 @@ def test_command_keeps_wheels_and_lateral_acceleration_within_their_bounds(
     error: float, bend: float, distance: float, chosen: Numbers
 ) -> None:
     """Bounds of Kim, Kim and Kwon (IEEE Trans. SMC-B 31(3), 2001): |v| + |w| L/2 <= v_max and |v w| <= R_m."""
-    v, w = (float(part) for part in drive(np.float64(error), np.float64(bend), distance, chosen, CART))
+    v, w = (float(part) for part in DriveLaw(np.float64(bend), distance, chosen, CART)(np.float64(error)))
     assert 0.0 <= v <= chosen.arrival_gain * distance + 1e-12
     assert abs(v) + 0.5 * CART.track * abs(w) <= CART.wheel_speed * (1.0 + 1e-9)
     assert abs(v * w) <= chosen.lateral_accel * (1.0 + 1e-9)
@@ -33,7 +33,7 @@ def test_command_keeps_wheels_and_lateral_acceleration_within_their_bounds(
 @given(angles, numbers)
 def test_without_bend_it_turns_towards_the_heading(error: float, chosen: Numbers) -> None:
     """REP-103: anticlockwise is positive. The rate is K_w times the root of the error, until the wheels end it."""
-    _, w = drive(np.float64(error), 0.0, 1.0, chosen, CART)
+    _, w = DriveLaw(0.0, 1.0, chosen, CART)(np.float64(error))
     most = 2.0 * CART.wheel_speed / CART.track
     wanted = min(chosen.steer_gain * np.sqrt(abs(error)), most)
     assert float(w) == pytest.approx(np.copysign(wanted, error), abs=1e-12)
@@ -43,7 +43,7 @@ def test_without_bend_it_turns_towards_the_heading(error: float, chosen: Numbers
 def test_straight_ahead_it_drives_at_full_speed_until_the_distance_left_slows_it(distance: float, speed: float) -> None:
     """Closed form: v = min(v_max, K_p d), with K_p = 2 / s."""
     chosen = DEFAULTS.model_copy(update={"arrival_gain": 2.0}).numbers()
-    v, w = drive(np.float64(0.0), np.float64(0.0), distance, chosen, CART)
+    v, w = DriveLaw(np.float64(0.0), distance, chosen, CART)(np.float64(0.0))
     assert float(v) == pytest.approx(speed)
     assert float(w) == 0.0
 

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 import secrets
 import time
 from collections import deque
@@ -11,7 +10,7 @@ from collections.abc import Callable
 from geometry_msgs.msg import PoseStamped
 from rclpy.task import Future
 
-from fieldnav_ros.drive import wrap
+from fieldnav_ros.drive import apart
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.model import Layout, Outcome, OutcomeKind, Pose
 from fieldnav_ros.nodes.base import LATCHED, FieldnavNode
@@ -115,5 +114,5 @@ class Observer:
 
     def _same(self, one: Pose, other: Pose) -> bool:
         """Tell whether two poses are the same as far as arriving goes: some stacks repeat or refine their goals."""
-        near = math.hypot(one.x - other.x, one.y - other.y) <= self._yard.arrival.position
-        return near and abs(float(wrap(one.yaw - other.yaw))) <= self._yard.arrival.heading
+        far, turn = apart(one, other)
+        return far <= self._yard.arrival.position and abs(turn) <= self._yard.arrival.heading

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from fieldnav_ros.crowd import NANO, Crowd, Reading
-from fieldnav_ros.drive import wrap
+from fieldnav_ros.drive import apart
 from fieldnav_ros.model import KINDS, Layout, Outcome, OutcomeKind, Robot
 from fieldnav_ros.world.judge import RUNNING, Track, look
 from fieldnav_ros.yard import Arrival, Floor
@@ -104,9 +104,8 @@ class EpisodeWatch:
         """Return by how much (m) the pose is off what the robot can have driven to; 0: it can have."""
         robot = self._rules.robot
         reach = JUMP_MARGIN * robot.wheel_speed * (reading.stamp - last.stamp) / NANO
-        far = math.hypot(reading.x - last.x, reading.y - last.y)
-        turn = abs(float(wrap(reading.yaw - last.yaw)))
-        return far if far > reach + JUMP_SLACK or turn > 2.0 * reach / robot.track + JUMP_SLACK_YAW else 0.0
+        far, turn = apart(last, reading)
+        return far if far > reach + JUMP_SLACK or abs(turn) > 2.0 * reach / robot.track + JUMP_SLACK_YAW else 0.0
 
     def _judge(self, last: Reading, start: int, reading: Reading, moment: int) -> Ruling | None:
         rules = self._rules

@@ -10,7 +10,7 @@ from episodes import YARD
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from fieldnav_ros.drive import drive, wrap
+from fieldnav_ros.drive import DriveLaw, wrap
 from fieldnav_ros.field.avoidance import Obstacles
 from fieldnav_ros.field.foresight import EASE, LOOKS, MARGIN, Course, Robots, Zones, look_ahead
 from fieldnav_ros.parameters import DEFAULTS, Numbers, ParameterSet
@@ -65,7 +65,7 @@ def test_it_ends_where_the_plant_would_be() -> None:
         ahead = look_ahead(start, course, zones(start, crowd(), numbers), thin(numbers), ROBOT)
         motion, plant = Motion(*(part.copy() for part in start[:5])), PlantRows.of([Plant()])
         for _ in range(round(lead / STEP)):
-            v, w = drive(wrap(facing - motion.yaw), 0.0, start.distance, rows(numbers), ROBOT, EASE)
+            v, w = DriveLaw(0.0, start.distance, rows(numbers), ROBOT, EASE)(wrap(facing - motion.yaw))
             motion = step(motion, v, w, ROBOT, plant)
         off.append(math.hypot(ahead.x.item() - motion.x[0], ahead.y.item() - motion.y[0]))
         turned.append(abs(float(wrap(ahead.yaw.item() - motion.yaw[0]))))
