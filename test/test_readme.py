@@ -25,7 +25,7 @@ def test_verbs_listed_are_the_verbs_there_are() -> None:
 
 
 def warnings_of_the_nodes() -> set[str]:
-    """Return the names under which nodes count warnings: of ``warn`` and of the halts that are faults."""
+    """Return the names under which nodes count warnings: of ``warn``, ``usable`` and the halts that are faults."""
     package = Path(__file__).parent.parent / "fieldnav_ros"
     found = set()
     for path in [*package.glob("nodes/**/*.py"), package / "pilot.py"]:
@@ -34,7 +34,7 @@ def warnings_of_the_nodes() -> set[str]:
                 continue
             name = call.func.attr if isinstance(call.func, ast.Attribute) else getattr(call.func, "id", "")
             harmless = any(key.arg == "fault" and ast.unparse(key.value) == "False" for key in call.keywords)
-            if name == "warn" or (name == "Halt" and not harmless):
+            if name in ("warn", "usable") or (name == "Halt" and not harmless):
                 found.add(("stopped_" if name == "Halt" else "") + str(call.args[0].value))
     return found
 

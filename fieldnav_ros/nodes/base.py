@@ -38,6 +38,8 @@ DEEP = QoSProfile(depth=2000, reliability=ReliabilityPolicy.RELIABLE)
 SENSOR = qos_profile_sensor_data
 NEWEST = QoSProfile(depth=1, reliability=ReliabilityPolicy.BEST_EFFORT)
 """For guidance: where poses come faster than it can think, it takes the newest, not one that has waited."""
+EARLY = 4000
+"""Messages from before a request that lockstep keeps: an episode's first ones may overtake it."""
 QUIET_TIME = 5.0
 """Seconds for which the same warning is not logged again."""
 OK, WARN, ERROR = DiagnosticStatus.OK, DiagnosticStatus.WARN, DiagnosticStatus.ERROR
@@ -105,10 +107,14 @@ class FieldnavNode(Node):
 
     def decoded(self, decode: Callable[[str], Decoded], message: String) -> Decoded | None:
         """Return the payload of a message; a malformed one is counted, warned about and None."""
+        return self.usable("malformed_messages", decode, message.data)
+
+    def usable(self, kind: str, read: Callable[..., Decoded], *given: Any) -> Decoded | None:
+        """Return what ``read`` makes of what came; what it refuses is counted under ``kind``, warned about and None."""
         try:
-            return decode(message.data)
+            return read(*given)
         except InputError as error:
-            self.warn("malformed_messages", f"ignored: {error}")
+            self.warn(kind, f"ignored: {error}")
             return None
 
     def close(self) -> None:

@@ -81,7 +81,7 @@ class InService:
         return True
 
     def put_champion(self) -> Generator[Wait, Any, bool]:
-        """Put the champion in service, if it is not there already."""
+        """Put the champion in service and confirm it; False as for ``put``."""
         champion = self._keeper.session.champion
         return (yield from self.put(champion.set_id, champion.parameters))
 

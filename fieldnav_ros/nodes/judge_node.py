@@ -12,9 +12,9 @@ from geometry_msgs.msg import PoseArray
 from std_msgs.msg import String
 
 from fieldnav_ros.crowd import NANO
-from fieldnav_ros.errors import InputError
 from fieldnav_ros.judging import Judging, Patience
 from fieldnav_ros.nodes.base import (
+    EARLY,
     ERROR,
     LATCHED,
     MATCH_STAMPS,
@@ -56,8 +56,6 @@ SETTINGS: tuple[Setting, ...] = (
     MATCH_STAMPS,
     RELIABLE_INPUT,
 )
-EARLY = 4000
-"""Messages from before a request that lockstep keeps."""
 
 
 class JudgeNode(FieldnavNode):
@@ -126,12 +124,9 @@ class JudgeNode(FieldnavNode):
         if not self._judging.running:
             self._keep(message)
             return
-        try:
-            reading = reading_from(message, self._frame)
-        except InputError as error:
-            self.warn("bad_poses", f"ignored: {error}")
-            return
-        self._rule(self._judging.pose(reading, self._moment(reading.stamp), time.monotonic()))
+        reading = self.usable("bad_poses", reading_from, message, self._frame)
+        if reading is not None:
+            self._rule(self._judging.pose(reading, self._moment(reading.stamp), time.monotonic()))
 
     def _moment(self, stamp: int) -> int:
         return time.monotonic_ns() if self._by_arrival else stamp
@@ -145,12 +140,9 @@ class JudgeNode(FieldnavNode):
         if not self._judging.running:
             self._keep(message)
             return
-        try:
-            sighting = sighting_from(message, self._frame)
-        except InputError as error:
-            self.warn("bad_obstacles", f"ignored: {error}")
-            return
-        self._rule(self._judging.sighting(sighting, self._moment(sighting.stamp)))
+        sighting = self.usable("bad_obstacles", sighting_from, message, self._frame)
+        if sighting is not None:
+            self._rule(self._judging.sighting(sighting, self._moment(sighting.stamp)))
 
     def _look_at_clock(self) -> None:
         if self._episode is None:

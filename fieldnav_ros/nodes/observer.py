@@ -11,7 +11,6 @@ from geometry_msgs.msg import PoseStamped
 from rclpy.task import Future
 
 from fieldnav_ros.drive import apart
-from fieldnav_ros.errors import InputError
 from fieldnav_ros.model import Layout, Outcome, OutcomeKind, Pose
 from fieldnav_ros.nodes.base import LATCHED, FieldnavNode
 from fieldnav_ros.nodes.convert import goal_from
@@ -84,10 +83,8 @@ class Observer:
             self._end(NO_OUTCOME, "tuner")
 
     def _on_goal(self, message: PoseStamped) -> None:
-        try:
-            goal = goal_from(message, self._frame)
-        except InputError as error:
-            self._node.warn("bad_goals", f"ignored: {error}")
+        goal = self._node.usable("bad_goals", goal_from, message, self._frame)
+        if goal is None:
             return
         here = self._feed.newest
         if here is None:

@@ -7,7 +7,6 @@ from collections.abc import Callable
 from typing import Any
 
 from fieldnav_ros.crowd import Reading
-from fieldnav_ros.errors import InputError
 from fieldnav_ros.nodes.base import SENSOR, FieldnavNode
 from fieldnav_ros.nodes.convert import POSE_TYPES, reading_from
 
@@ -27,10 +26,8 @@ class PoseFeed:
         return None if self._came is None else time.monotonic() - self._came
 
     def _take(self, message: Any) -> None:
-        try:
-            reading = reading_from(message, self._frame)
-        except InputError as error:
-            self._node.warn("bad_poses", f"ignored: {error}")
+        reading = self._node.usable("bad_poses", reading_from, message, self._frame)
+        if reading is None:
             return
         self.newest, self._came = reading, time.monotonic()
         self._on_pose(reading)

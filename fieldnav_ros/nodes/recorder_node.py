@@ -25,7 +25,7 @@ from fieldnav_ros.bags.definitions import check_installed
 from fieldnav_ros.bags.recorder import MOST_BYTES, MOST_MESSAGES, Recorder
 from fieldnav_ros.crowd import NANO
 from fieldnav_ros.errors import InputError
-from fieldnav_ros.nodes.base import MATCH_STAMPS, OK, RELIABLE_INPUT, WARN, FieldnavNode, run
+from fieldnav_ros.nodes.base import EARLY, MATCH_STAMPS, OK, RELIABLE_INPUT, WARN, FieldnavNode, run
 from fieldnav_ros.nodes.convert import POSE_TYPES
 from fieldnav_ros.nodes.declare import Setting
 from fieldnav_ros.nodes.payloads import EpisodeRequested, decode_outcome, decode_request
@@ -45,8 +45,6 @@ SETTINGS: tuple[Setting, ...] = (
 DEPTH = 2000
 """Messages that the middleware keeps while this process is busy."""
 MOST_PARAMETERS = 1000
-EARLY = 4000
-"""Messages from before a request that lockstep keeps."""
 CLOSING = 3.0
 """Seconds that the disk has to take the end of a bag when the node ends."""
 GRAPH_AGE = 2.0

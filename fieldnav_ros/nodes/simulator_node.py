@@ -129,12 +129,9 @@ class SimulatorNode(FieldnavNode):
         return {"episode": self.episode.episode if self.episode else "", "mode": self.settings["mode"]}
 
     def _on_command(self, message: Any) -> None:
-        try:
-            v, w = speeds_from(message)
-        except InputError as error:
-            self.warn("bad_commands", f"ignored: {error}")
-            return
-        self.mode.command(v, w, nanoseconds(message.header.stamp) if isinstance(message, TwistStamped) else 0)
+        speeds = self.usable("bad_commands", speeds_from, message)
+        if speeds is not None:
+            self.mode.command(*speeds, nanoseconds(message.header.stamp) if isinstance(message, TwistStamped) else 0)
 
     def _on_request(self, message: String) -> None:
         request = self.decoded(decode_request, message)
