@@ -19,18 +19,17 @@ from pathlib import Path
 import numpy as np
 
 HERE = Path(__file__).resolve()
-sys.path.insert(0, str(HERE.parents[2]))
+sys.path[:0] = [str(HERE.parent), str(HERE.parents[2])]
+from simulated import hold, one_robot, parcel_yard  # beside this file
 
 from fieldnav_ros.parameters import ParameterSet
-from fieldnav_ros.resources import config_path
 from fieldnav_ros.tuning.config import SessionConfig
 from fieldnav_ros.tuning.cost import costs
-from fieldnav_ros.tuning.pretune import pretune, pretune_config, session_on
+from fieldnav_ros.tuning.pretune import pretune_config
 from fieldnav_ros.tuning.space import Prior
-from fieldnav_ros.world.batch import BatchResult, simulate
+from fieldnav_ros.world.batch import simulate
 from fieldnav_ros.world.layouts import draw_many
-from fieldnav_ros.world.work import Work
-from fieldnav_ros.yard import Plant, PlantRanges, Yard, load_yard
+from fieldnav_ros.yard import Plant, Yard
 
 GRADE = "moving"
 SITE = Plant(accel_scale=0.6, command_delay=0.06, wheel_mismatch=0.08, slip=0.10)
@@ -38,19 +37,13 @@ PREPARED = 20_000
 UNSEEN = 7_000_000
 
 
-def site_of(yard: Yard) -> Yard:
-    """Return the yard with the site's robot on it and no other."""
-    still = PlantRanges(**dict.fromkeys(PlantRanges.model_fields, (0.0, 0.0)))
-    return yard.model_copy(update={"plant": SITE, "plant_ranges": still})
-
-
 class Bench:
     """Runs sessions in batched simulation and judges sets on the site's unseen layouts."""
 
     def __init__(self, unseen: int, model: str) -> None:
         self.model = model
-        self.home: Yard = load_yard(config_path("yards/parcel_yard.yaml"))
-        self.site = site_of(self.home)
+        self.home = parcel_yard()
+        self.site = one_robot(self.home, SITE)
         self.limit = self.site.grade(GRADE).time_limit
         self._unseen = draw_many(self.site, GRADE, unseen, UNSEEN)
 
@@ -61,25 +54,16 @@ class Bench:
 
     def prepare(self, yard: Yard, seed: int, prior: Prior | None = None) -> Prior:
         """Return what a preparation on a yard learns."""
-        session, config = session_on(yard), pretune_config(yard, PREPARED, seed)
-        session.apply(*session.begin(config, prior=prior))
-        pretune(session, yard, lambda _: None, self._run)
-        return session.prior()
+        return hold(yard, pretune_config(yard, PREPARED, seed), self.model, prior).prior()
 
     def visit(self, prior: Prior, episodes: int, seed: int) -> tuple[ParameterSet, str]:
         """Run a session on site; return the champion and the verdict, or why there was none."""
-        yard = self.site
         config = SessionConfig(
             seed=seed, floor_time_s=episodes * 2.0 * self.limit, episodes=episodes, grade=GRADE, time_limit=self.limit,
-            rounds=1, reset_guess_s=yard.reset_time,
+            rounds=1, reset_guess_s=self.site.reset_time,
         )  # fmt: skip
-        session = session_on(yard)
-        session.apply(*session.begin(config, prior.parameters(), prior))
-        pretune(session, yard, lambda _: None, self._run)
+        session = hold(self.site, config, self.model, prior, prior.parameters())
         return session.champion.parameters, str(session.summary()["last_verdict"])
-
-    def _run(self, work: Work) -> list[BatchResult]:
-        return [work._replace(model=self.model).run()]
 
 
 def main() -> None:

@@ -25,18 +25,16 @@ import numpy as np
 import optuna
 
 HERE = Path(__file__).resolve()
-sys.path.insert(0, str(HERE.parents[2]))
+sys.path[:0] = [str(HERE.parent), str(HERE.parents[2])]
+from simulated import hold, one_robot, parcel_yard  # beside this file
 
 from fieldnav_ros.parameters import DEFAULTS, ParameterSet, stack
-from fieldnav_ros.resources import config_path
 from fieldnav_ros.tuning.cost import costs
-from fieldnav_ros.tuning.events import Event
-from fieldnav_ros.tuning.pretune import pretune, pretune_config, session_on
+from fieldnav_ros.tuning.pretune import pretune_config
 from fieldnav_ros.tuning.space import SPACE, Prior
-from fieldnav_ros.world.batch import BatchResult, _Run, simulate
+from fieldnav_ros.world.batch import _Run, simulate
 from fieldnav_ros.world.layouts import draw_many
-from fieldnav_ros.world.work import Work
-from fieldnav_ros.yard import PlantRanges, Yard, load_yard
+from fieldnav_ros.yard import Yard
 
 GRADE = "moving"
 POPULATION, LAYOUTS, GENERATIONS = 10, 10, 75
@@ -52,9 +50,8 @@ class Floor:
 
     def __init__(self, unseen: int, model: str) -> None:
         self.model = model
-        self.ranged: Yard = load_yard(config_path("yards/parcel_yard.yaml"))
-        still = PlantRanges(**dict.fromkeys(PlantRanges.model_fields, (0.0, 0.0)))
-        self.yard: Yard = self.ranged.model_copy(update={"plant_ranges": still})
+        self.ranged = parcel_yard()
+        self.yard = one_robot(self.ranged)
         self.limit = self.yard.grade(GRADE).time_limit
         self._unseen = draw_many(self.yard, GRADE, unseen, UNSEEN)
 
@@ -114,17 +111,10 @@ def random_search(floor: Floor, seed: int) -> ParameterSet:
 
 def ours(floor: Floor, yard: Yard, episodes: int, seed: int, prior: Prior | None) -> tuple[Prior, ParameterSet]:
     """Run a session as ``fieldnav pretune`` does; return what it learnt and what it would put in service."""
-    session, config = session_on(yard), pretune_config(yard, max(episodes, 400), seed)
+    config = pretune_config(yard, max(episodes, 400), seed)
     if prior is not None:
         config = config.model_copy(update={"lead_in": ()})
-    events: list[Event] = session.begin(config, prior=prior)
-    session.apply(*events)
-
-    def run(work: Work) -> list[BatchResult]:
-        return [work._replace(model=floor.model).run()]
-
-    pretune(session, yard, lambda _: None, run)
-    learnt = session.prior()
+    learnt = hold(yard, config, floor.model, prior).prior()
     return learnt, learnt.parameters()
 
 

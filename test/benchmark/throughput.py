@@ -21,17 +21,17 @@ from pathlib import Path
 import compiled
 import numpy as np
 import pymunk
+from simulated import one_robot, parcel_yard
 
 from fieldnav_ros.model import Layout
 from fieldnav_ros.parameters import DEFAULTS, ParameterSet
 from fieldnav_ros.prepare.workers import InPlace, LocalProcesses
-from fieldnav_ros.resources import config_path
 from fieldnav_ros.tuning.space import SPACE
 from fieldnav_ros.world.batch import BatchResult, simulate
 from fieldnav_ros.world.layouts import draw_many
 from fieldnav_ros.world.plant import STEP
 from fieldnav_ros.world.work import Work
-from fieldnav_ros.yard import PlantRanges, Yard, load_yard
+from fieldnav_ros.yard import Yard
 
 SETS, LAYOUTS, GRADE, MODEL, SEED = 8, 400, "moving", "published", 3
 REPEATS = 5
@@ -40,8 +40,7 @@ SCENES, SCENE_STEPS = 60, 300
 
 def scene() -> tuple[Yard, list[Layout], list[ParameterSet]]:
     """Return the yard, the layouts, and sets spread around the defaults."""
-    yard = load_yard(config_path("yards/parcel_yard.yaml"))
-    yard = yard.model_copy(update={"plant_ranges": PlantRanges(**dict.fromkeys(PlantRanges.model_fields, (0.0, 0.0)))})
+    yard = one_robot(parcel_yard())
     rng = np.random.default_rng(0)
     sets = [SPACE.from_unit(SPACE.to_unit(DEFAULTS) + 0.15 * rng.standard_normal(9)) for _ in range(SETS)]
     return yard, draw_many(yard, GRADE, LAYOUTS, SEED), sets
