@@ -1,4 +1,4 @@
-"""Single episodes on the parcel yard for tests: layouts by hand, and the headings that guidance gave on the way."""
+"""Single episodes for tests: layouts by hand, the headings given on the way, and episodes driven as nodes do."""
 
 from __future__ import annotations
 
@@ -6,16 +6,24 @@ from typing import NamedTuple
 
 import numpy as np
 
-from fieldnav_ros.guide import Memory, Senses, guide
-from fieldnav_ros.model import KINDS, Layout, Obstacle, OutcomeKind, Pose
-from fieldnav_ros.parameters import ParameterSet, stack
+from fieldnav_ros.crowd import NANO, Crowd, Reading, Sighting
+from fieldnav_ros.guide import DEFAULT_MODEL, Memory, Senses, guide
+from fieldnav_ros.model import KINDS, Layout, Obstacle, Outcome, OutcomeKind, Pose
+from fieldnav_ros.parameters import DEFAULTS, ParameterSet, stack
+from fieldnav_ros.pilot import Order, Pilot, PilotRules
 from fieldnav_ros.resources import config_path
+from fieldnav_ros.tracking import Rules as TrackingRules
 from fieldnav_ros.world import carts as others
 from fieldnav_ros.world.judge import Track, look
 from fieldnav_ros.world.plant import STEP, Motion, PlantRows, step
-from fieldnav_ros.yard import Plant, load_yard
+from fieldnav_ros.world.stage import Stage
+from fieldnav_ros.world.watch import EpisodeWatch, Rules
+from fieldnav_ros.yard import Plant, Yard, load_yard
 
 YARD = load_yard(config_path("yards/parcel_yard.yaml"))
+EXACT = TrackingRules(alpha=1.0)
+"""For positions without noise."""
+STEP_NS = round(STEP * NANO)
 EVERY = 2
 """Steps of the plant for each pose."""
 
@@ -64,3 +72,34 @@ def ride(where: Layout, numbers: ParameterSet, model: str, limit: float = 8.0) -
         if found.code[0] >= 0:
             return Ride(KINDS[int(found.code[0])], (number + 1) * STEP, np.array(headings), np.array(speeds))
     return Ride(OutcomeKind.TIMEOUT, limit, np.array(headings), np.array(speeds))
+
+
+def as_nodes_do(
+    yard: Yard, layout: Layout, limit: float, parameters: ParameterSet = DEFAULTS
+) -> tuple[list[tuple[Sighting, Reading]], Outcome]:
+    """Run guidance, world and judge as in a lockstep session, without the messages between them.
+
+    Returns what was seen at each pose, and what the judge's rules said.
+    """
+    rules = PilotRules(yard.robot, yard.floor, yard.arrival, match_stamps=True)
+    pilot = Pilot(rules, Crowd(EXACT, yard.cart_radius), parameters.numbers(), DEFAULT_MODEL)
+    pilot.start_episode("e", layout.goal, limit)
+    crowd = Crowd(EXACT, yard.cart_radius)
+    watch = EpisodeWatch(layout, Rules(yard.robot, yard.floor, yard.arrival, limit), crowd)
+    stage, seen = Stage(yard, layout, limit + 1.0), list[tuple[Sighting, Reading]]()
+    while True:
+        shown = stage.show()
+        stamp = NANO + shown.number * STEP_NS
+        sighting = Sighting(stamp, np.stack([shown.obstacles.x[:, 0], shown.obstacles.y[:, 0]]))
+        reading = Reading(stamp, shown.x, shown.y, shown.yaw)
+        seen.append((sighting, reading))
+        crowd.see(sighting, stamp)
+        ruling = watch.look_at(reading, stamp)
+        if ruling is not None:
+            return seen, ruling.outcome
+        pilot.crowd.see(sighting, stamp)
+        order = pilot.on_pose(reading, stamp, stamp)
+        assert isinstance(order, Order)
+        stage.command(order.v, order.w)
+        while not (stage.step() and not stage.lost):
+            pass

@@ -11,25 +11,15 @@ from functools import cache
 from pathlib import Path
 from typing import Any
 
-import numpy as np
+from episodes import YARD, as_nodes_do
 
 from fieldnav_ros.bags.bag import Bag, Channel
 from fieldnav_ros.bags.definitions import typestore
-from fieldnav_ros.crowd import NANO, Crowd, Reading, Sighting
-from fieldnav_ros.guide import DEFAULT_MODEL
+from fieldnav_ros.crowd import NANO, Reading, Sighting
 from fieldnav_ros.model import Layout, Outcome
 from fieldnav_ros.nodes.payloads import EpisodeOutcome, RunEpisode, StopEpisode, encode
 from fieldnav_ros.parameters import DEFAULTS, ParameterSet
-from fieldnav_ros.pilot import Order, Pilot, PilotRules
-from fieldnav_ros.resources import config_path
-from fieldnav_ros.tracking import Rules as TrackingRules
-from fieldnav_ros.world.stage import Stage
-from fieldnav_ros.world.watch import EpisodeWatch, Rules
-from fieldnav_ros.yard import load_yard
 
-YARD = load_yard(config_path("yards/parcel_yard.yaml"))
-EXACT = TrackingRules(alpha=1.0)
-STEP_NS = 10_000_000
 BEGAN = 1_700_000_000 * NANO
 CHANNELS = (
     Channel("episode/request", "/episode/request", "std_msgs/msg/String"),
@@ -90,28 +80,7 @@ def drive(
     layout: Layout, limit: float, parameters: ParameterSet = DEFAULTS
 ) -> tuple[list[tuple[Sighting, Reading]], Outcome]:
     """Run an episode as nodes do and return what was seen at each pose, and what the judge's rules said."""
-    rules = PilotRules(YARD.robot, YARD.floor, YARD.arrival, match_stamps=True)
-    pilot = Pilot(rules, Crowd(EXACT, YARD.cart_radius), parameters.numbers(), DEFAULT_MODEL)
-    pilot.start_episode("e", layout.goal, limit)
-    crowd = Crowd(EXACT, YARD.cart_radius)
-    watch = EpisodeWatch(layout, Rules(YARD.robot, YARD.floor, YARD.arrival, limit), crowd)
-    stage, seen = Stage(YARD, layout, limit + 1.0), list[tuple[Sighting, Reading]]()
-    while True:
-        shown = stage.show()
-        stamp = NANO + shown.number * STEP_NS
-        sighting = Sighting(stamp, np.stack([shown.obstacles.x[:, 0], shown.obstacles.y[:, 0]]))
-        reading = Reading(stamp, shown.x, shown.y, shown.yaw)
-        seen.append((sighting, reading))
-        crowd.see(sighting, stamp)
-        ruling = watch.look_at(reading, stamp)
-        if ruling is not None:
-            return seen, ruling.outcome
-        pilot.crowd.see(sighting, stamp)
-        order = pilot.on_pose(reading, stamp, stamp)
-        assert isinstance(order, Order)
-        stage.command(order.v, order.w)
-        while not (stage.step() and not stage.lost):
-            pass
+    return as_nodes_do(YARD, layout, limit, parameters)
 
 
 def lines_of(

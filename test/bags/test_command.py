@@ -9,7 +9,8 @@ from typing import Any
 
 import numpy as np
 import pytest
-from bags.recordings import YARD, Line, asked, drive, lines_of, write
+from bags.recordings import Line, asked, drive, lines_of, write
+from episodes import YARD
 
 from fieldnav_ros import cli
 from fieldnav_ros.guide import DEFAULT_MODEL

@@ -10,7 +10,8 @@ from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
-from bags.recordings import BEGAN, YARD, asked, lines_of, pose, recorded, text, write
+from bags.recordings import BEGAN, asked, lines_of, pose, recorded, text, write
+from episodes import YARD
 from mcap.reader import make_reader
 from mcap_ros2.decoder import DecoderFactory
 

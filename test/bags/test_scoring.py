@@ -8,10 +8,8 @@ import numpy as np
 import pytest
 from bags.recordings import (
     BEGAN,
-    EXACT,
     LOCKSTEP,
     PACED,
-    YARD,
     Line,
     asked,
     drive,
@@ -21,6 +19,7 @@ from bags.recordings import (
     text,
     write,
 )  # fmt: skip
+from episodes import EXACT, YARD
 
 from fieldnav_ros.bags.scoring import OtherRules, number_of, score_bag
 from fieldnav_ros.crowd import NANO, Reading

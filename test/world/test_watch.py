@@ -4,49 +4,14 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+from episodes import EXACT, YARD, as_nodes_do
 
 from fieldnav_ros.crowd import NANO, Crowd, Reading, Sighting
-from fieldnav_ros.guide import DEFAULT_MODEL
-from fieldnav_ros.model import Layout, Outcome, OutcomeKind, Pose
+from fieldnav_ros.model import Layout, OutcomeKind, Pose
 from fieldnav_ros.parameters import DEFAULTS
-from fieldnav_ros.pilot import Order, Pilot, PilotRules
-from fieldnav_ros.resources import config_path
-from fieldnav_ros.tracking import Rules as TrackingRules
 from fieldnav_ros.world.batch import simulate
 from fieldnav_ros.world.layouts import draw_many
-from fieldnav_ros.world.plant import STEP
-from fieldnav_ros.world.stage import Stage
 from fieldnav_ros.world.watch import EpisodeWatch, Rules, Ruling
-from fieldnav_ros.yard import Yard, load_yard
-
-YARD = load_yard(config_path("yards/parcel_yard.yaml"))
-EXACT = TrackingRules(alpha=1.0)
-STEP_NS = round(STEP * NANO)
-
-
-def run_as_nodes_do(yard: Yard, layout: Layout, limit: float) -> Outcome:
-    """Guidance, world and judge as in a lockstep session, without the messages between them."""
-    rules = PilotRules(yard.robot, yard.floor, yard.arrival, match_stamps=True)
-    pilot = Pilot(rules, Crowd(EXACT, yard.cart_radius), DEFAULTS.numbers(), DEFAULT_MODEL)
-    pilot.start_episode("e", layout.goal, limit)
-    crowd = Crowd(EXACT, yard.cart_radius)
-    watch = EpisodeWatch(layout, Rules(yard.robot, yard.floor, yard.arrival, limit), crowd)
-    stage = Stage(yard, layout, limit + 1.0)
-    while True:
-        shown = stage.show()
-        stamp = NANO + shown.number * STEP_NS
-        sighting = Sighting(stamp, np.stack([shown.obstacles.x[:, 0], shown.obstacles.y[:, 0]]))
-        reading = Reading(stamp, shown.x, shown.y, shown.yaw)
-        crowd.see(sighting, stamp)
-        ruling = watch.look_at(reading, stamp)
-        if ruling is not None:
-            return ruling.outcome
-        pilot.crowd.see(sighting, stamp)
-        order = pilot.on_pose(reading, stamp, stamp)
-        assert isinstance(order, Order)
-        stage.command(order.v, order.w)
-        while not (stage.step() and not stage.lost):
-            pass
 
 
 @pytest.mark.parametrize("grade", ["empty", "parked"])
@@ -58,7 +23,8 @@ def test_a_session_and_the_batch_agree_on_every_episode(grade: str) -> None:
     layouts = draw_many(YARD, grade, 6, seed=7)
     batch = simulate(YARD, grade, layouts, [DEFAULTS])
     for column, layout in enumerate(layouts):
-        outcome, expected = run_as_nodes_do(YARD, layout, YARD.grade(grade).time_limit), batch.outcome(0, column)
+        _, outcome = as_nodes_do(YARD, layout, YARD.grade(grade).time_limit)
+        expected = batch.outcome(0, column)
         assert outcome.kind == expected.kind
         assert 0.0 <= outcome.time - expected.time + 1e-9 < 0.02
 
@@ -72,7 +38,7 @@ def test_a_tampered_plant_is_the_batchs_plant() -> None:
     layouts = draw_many(yard, "empty", 6, seed=3)
     batch = simulate(yard, "empty", layouts, [DEFAULTS])
     for column, layout in enumerate(layouts):
-        outcome, expected = run_as_nodes_do(yard, layout, 5.0), batch.outcome(0, column)
+        (_, outcome), expected = as_nodes_do(yard, layout, 5.0), batch.outcome(0, column)
         assert outcome.kind == expected.kind
         assert 0.0 <= outcome.time - expected.time + 1e-9 < 0.02
 
