@@ -14,6 +14,7 @@ from typing import Any
 
 from rclpy.context import Context
 
+from fieldnav_ros.arguments import make_folder
 from fieldnav_ros.errors import InputError, WorkError
 from fieldnav_ros.nodes.domain import Domain
 from fieldnav_ros.nodes.payloads import TunerStatus
@@ -88,10 +89,7 @@ def _free_folder() -> Path:
 
 
 def _make(folder: Path) -> None:
-    try:
-        folder.mkdir(parents=True, exist_ok=True)
-    except OSError as error:
-        raise InputError(f"{folder}: cannot be made: {error.strerror}") from error
+    make_folder(folder)
     if not os.access(folder, os.W_OK):
         raise InputError(f"{folder}: cannot be written to")
 
@@ -111,8 +109,7 @@ def tuner_parameters(files: Files, floor_time_min: float, seed: int) -> dict[str
 @contextmanager
 def _graph(files: Files, floor_time_min: float, seed: int, record: bool) -> Iterator[tuple[Processes, Watch]]:
     domain = Domain()
-    environment = domain.environment()
-    os.environ.update(environment)
+    domain.enter()
     told: dict[str, dict[str, object]] = {
         "tuner_node": tuner_parameters(files, floor_time_min, seed), "recorder_node": {"bags": files.bags},
     }  # fmt: skip
@@ -120,7 +117,7 @@ def _graph(files: Files, floor_time_min: float, seed: int, record: bool) -> Iter
         told["simulator_node"] = {"listeners": 3.0}  # guidance, judge and recorder see the first pose
     nodes = (*(["recorder_node"] if record else []), "simulator_node", "judge_node", "guidance_node", "tuner_node")
     context = Context()
-    with Processes(environment) as processes:
+    with Processes() as processes:
         for node in nodes:
             own = config_path(f"{node.removesuffix('_node')}.yaml")
             processes.start(node, told.get(node, {}), [own, config_path("lockstep.yaml")])

@@ -47,11 +47,8 @@ class Domain:
         start = random.SystemRandom().randrange(len(DOMAINS))
         self.number, self._claim = claim_domain(start, int(used) if used.isdecimal() else None)
 
-    def environment(self) -> dict[str, str]:
-        """Return the variables that keep a process to this domain and this machine."""
-        prefix = os.environ.get("AMENT_PREFIX_PATH") or sys.prefix
-        return {
-            "ROS_DOMAIN_ID": str(self.number),
-            "ROS_AUTOMATIC_DISCOVERY_RANGE": "LOCALHOST",
-            "AMENT_PREFIX_PATH": prefix,
-        }
+    def enter(self) -> None:
+        """Keep this process, and those that it starts from now on, to this domain and this machine."""
+        os.environ.update(ROS_DOMAIN_ID=str(self.number), ROS_AUTOMATIC_DISCOVERY_RANGE="LOCALHOST")
+        if not os.environ.get("AMENT_PREFIX_PATH"):
+            os.environ["AMENT_PREFIX_PATH"] = sys.prefix

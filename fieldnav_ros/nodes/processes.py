@@ -25,8 +25,7 @@ class Processes:
     Inside it SIGTERM and SIGHUP end this program by SystemExit, so that no node is left behind running.
     """
 
-    def __init__(self, environment: Mapping[str, str]) -> None:
-        self._environment = {**os.environ, **environment}
+    def __init__(self) -> None:
         self._before: dict[int, Any] = {}
         self._children: dict[str, tuple[subprocess.Popen[bytes], IO[bytes]]] = {}
 
@@ -39,7 +38,7 @@ class Processes:
             words += ["-p", f"{name}:={_yaml(value)}"]
         log = tempfile.TemporaryFile()  # noqa: SIM115  (closed in stop, with the child that writes to it)
         child = subprocess.Popen(
-            words, env=self._environment, stdin=subprocess.DEVNULL, stdout=log, stderr=log, start_new_session=True
+            words, stdin=subprocess.DEVNULL, stdout=log, stderr=log, start_new_session=True
         )
         self._children[node] = (child, log)
 

@@ -2,12 +2,11 @@
 
 from __future__ import annotations
 
-import os
 import time
 from pathlib import Path
 from typing import Any, NamedTuple
 
-from fieldnav_ros.errors import InputError
+from fieldnav_ros.arguments import make_folder
 from fieldnav_ros.nodes.domain import Domain
 from fieldnav_ros.nodes.pit import command as pit
 from fieldnav_ros.nodes.processes import Processes
@@ -70,16 +69,12 @@ def start_node(processes: Processes, node: str, parameters: dict[str, object]) -
 
 def run_rehearsal(rehearsal: Rehearsal) -> dict[str, Any]:
     """Run nodes and terminal until the terminal is left; return the summary. Raises WorkError where a node dies."""
-    try:
-        rehearsal.folder.mkdir(parents=True, exist_ok=True)
-    except OSError as error:
-        raise InputError(f"{rehearsal.folder}: cannot be made: {error.strerror}") from error
+    make_folder(rehearsal.folder)
     domain = Domain()
-    environment = domain.environment()
-    os.environ.update(environment)
+    domain.enter()
     print(f"Nodes start; for another terminal: ROS_DOMAIN_ID={domain.number} fieldnav pit --watch")
     began = time.monotonic()
-    with Processes(environment) as processes:
+    with Processes() as processes:
         rehearsal.start(processes)
         farewell = f"The rehearsal is over; what it left is in {rehearsal.folder}."
         summary = pit.run("", "tuner_node", watch_only=False, check=processes.check, farewell=farewell)

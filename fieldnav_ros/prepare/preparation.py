@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import Any
 
 from fieldnav_ros import __version__
+from fieldnav_ros.arguments import make_folder
 from fieldnav_ros.errors import InputError
 from fieldnav_ros.params_file import write_parameters, write_text
 from fieldnav_ros.prepare.interrupts import Stop, Stopped
@@ -67,10 +68,7 @@ class Files:
 
     def make(self) -> None:
         """Make the folder; InputError where that is not possible."""
-        try:
-            self.folder.mkdir(parents=True, exist_ok=True)
-        except OSError as error:
-            raise InputError(f"{self.folder}: cannot be made: {error.strerror}") from error
+        make_folder(self.folder)
 
     def write(self, session: Session, yard: Yard) -> None:
         """Write prior and champion as the session stands."""

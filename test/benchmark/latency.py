@@ -125,13 +125,13 @@ def wait_for(side: Side, executor: Executor) -> None:
             raise SystemExit(f"{side.name} did not answer within {START_LIMIT:g} s")
 
 
-def start(environment: dict[str, str]) -> list[subprocess.Popen[bytes]]:
+def start() -> list[subprocess.Popen[bytes]]:
     """Start the guidance node and the relay, each in a namespace of its own."""
     words = {
         "guidance": ["-m", "fieldnav_ros.nodes.guidance_node", "--ros-args", "-p", "pose_period:=0.005"],
         "relay": [str(HERE), "--relay", "--ros-args"],
     }
-    everything = {**os.environ, **environment, "PYTHONPATH": str(HERE.parents[2])}
+    everything = {**os.environ, "PYTHONPATH": str(HERE.parents[2])}
     return [
         subprocess.Popen([sys.executable, *words[side], "-r", f"__ns:=/{side}"], env=everything) for side in SIDES
     ]  # fmt: skip
@@ -154,14 +154,14 @@ def main() -> None:
     parser.add_argument("--rounds", type=int, default=3)
     parser.add_argument("--rates", type=float, nargs="+", default=[50.0, 200.0, 500.0])
     given = parser.parse_args()
-    environment = Domain().environment()
-    os.environ.update(environment)
+    domain = Domain()
+    domain.enter()
     context = Context()
     rclpy.init(args=[], context=context)
     node = rclpy.create_node("latency", context=context)
     executor = EventsExecutor(context=context)
     executor.add_node(node)
-    children = start(environment)
+    children = start()
     try:
         sides = [Side(node, name) for name in SIDES]
         for side in sides:

@@ -12,7 +12,6 @@ from __future__ import annotations
 
 import argparse
 import json
-import os
 import random
 import signal
 import sys
@@ -107,9 +106,9 @@ class Tally:
 class Session:
     """A lockstep session with everything needed to disturb it; a context manager."""
 
-    def __init__(self, folder: Path, environment: dict[str, str], seed: int) -> None:
+    def __init__(self, folder: Path, seed: int) -> None:
         self._folder, self._seed = folder, seed
-        self._processes = Processes(environment)
+        self._processes = Processes()
         self._random = random.Random(seed)
         self.tally = Tally()
 
@@ -189,9 +188,9 @@ def main() -> int:
     parser.add_argument("--restarts", type=int, default=3)
     parser.add_argument("--seed", type=int, default=1)
     given = parser.parse_args()
-    environment = Domain().environment()
-    os.environ.update(environment)
-    with tempfile.TemporaryDirectory() as folder, Session(Path(folder), environment, given.seed) as session:
+    domain = Domain()
+    domain.enter()
+    with tempfile.TemporaryDirectory() as folder, Session(Path(folder), given.seed) as session:
         for number in range(given.calls):
             session.call()
             print(f"{number + 1:4d}  {session.tally.times[-1]:.3f} s", flush=True)

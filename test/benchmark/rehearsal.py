@@ -10,7 +10,6 @@ from __future__ import annotations
 
 import argparse
 import json
-import os
 import sys
 import tempfile
 import time
@@ -86,10 +85,10 @@ def main() -> int:
     folder = given.out or Path(tempfile.mkdtemp(prefix="fieldnav-rehearsal-"))
     folder.mkdir(parents=True, exist_ok=True)
     rehearsal = Rehearsal(folder, given.floor_time, given.speed, given.seed, record=given.record)
-    environment = Domain().environment()
-    os.environ.update(environment)
+    domain = Domain()
+    domain.enter()
     began = time.monotonic()
-    with Processes(environment) as processes:
+    with Processes() as processes:
         rehearsal.start(processes)
         used, judged = operate(rehearsal, processes)
     figures = result(rehearsal, used, judged, time.monotonic() - began)

@@ -18,7 +18,7 @@ pytestmark = pytest.mark.ros
 
 def test_a_dozen_match_calls_put_the_champion_back_and_one_that_hangs_is_not_called_done(tmp_path: Path) -> None:
     """Guidance's own numbers are read each time. How long an answer took is measured, not asserted."""
-    with Session(tmp_path, {}, seed=4) as session:
+    with Session(tmp_path, seed=4) as session:
         for _ in range(12):
             session.call()
         session.disturbed(restart=False)

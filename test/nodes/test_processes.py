@@ -15,7 +15,7 @@ pytestmark = pytest.mark.ros
 PROGRAM = """
 import time
 from fieldnav_ros.nodes.processes import Processes
-with Processes({}) as processes:
+with Processes() as processes:
     processes.start("judge_node", {})
     ((child, _),) = processes._children.values()
     print(child.pid, flush=True)

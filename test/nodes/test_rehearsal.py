@@ -33,7 +33,7 @@ def rehearsal(tmp_path: Path) -> Iterator[Rehearsal]:
         tmp_path, FLOOR_TIME, SPEED, seed=3, grade="empty",
         yard=small("parcel_yard", tmp_path), floor=small("rehearsal_floor", tmp_path),
     )  # fmt: skip
-    with Processes({}) as processes:
+    with Processes() as processes:
         made.start(processes)
         yield made
         processes.check()

@@ -61,7 +61,7 @@ def start(processes: Processes, node: str, folder: Path) -> None:
 
 @pytest.fixture
 def world() -> Iterator[Processes]:
-    with Processes({}) as processes:
+    with Processes() as processes:
         for node in WORLD:
             start(processes, node, Path())
         yield processes
@@ -126,7 +126,7 @@ def test_champion_file_puts_its_numbers_in_service_by_params_file(
     executor = SingleThreadedExecutor(context=context)
     executor.add_node(node)
     client = AsyncParameterClient(node, "guidance_node")
-    with Processes({}) as processes:
+    with Processes() as processes:
         processes.start("guidance_node", {}, [champion])
         assert client.wait_for_services(DEADLINE)
         wanted = read_parameters(champion).to_ros()
