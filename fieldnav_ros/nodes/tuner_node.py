@@ -158,7 +158,7 @@ class TunerNode(FieldnavNode):
             self.warn("outcomes_late", f"episode {episode.id}: no outcome in time; it is run again")
             self._stop_episode()
             self.keeper.commit(self.session.note("tuner", f"episode {episode.id}: no outcome in time, run again"))
-            self.keeper.commit(self._spent("an episode without outcome"))
+            self._spend(self.floor.book(), "an episode without outcome")
             return
         # requests are latched: who joins now must find a word to stop, not the episode that is over
         self._stop_episode()
@@ -196,9 +196,9 @@ class TunerNode(FieldnavNode):
         past = PastEpisode(episode=number, kind=report.kind, time=report.time, source=report.source)
         self._last.appendleft(past)
 
-    def _spent(self, why: str) -> Any:
-        seconds = self.floor.book()
-        return self.session.spend(seconds, why) if seconds > 0.0 else []
+    def _spend(self, seconds: float, why: str) -> None:
+        if seconds > 0.0:
+            self.keeper.commit(self.session.spend(seconds, why))
 
     def _look_at_floor(self) -> None:
         """End the session when an episode can no longer end in time: resets and waits may take as long as they like."""
@@ -234,14 +234,14 @@ class TunerNode(FieldnavNode):
         wanted = self.settings["outcomes"]
         if report.source != wanted:
             reason = f"outcomes count from the {wanted}, not from the {report.source}"
-            self.keeper.commit(self.session.ignore(number, report.outcome(), report.source, reason))
         elif self._running is not None and self._running[1].id == number:
             reason = "it is about an earlier run of this episode, or another report came first"
-            self.keeper.commit(self.session.ignore(number, report.outcome(), report.source, reason))
         else:
             events = self.session.record(number, report.outcome(), 0.0, report.source)
             if events and events[0].kind == "report_ignored":
                 self.keeper.commit(events)
+            return
+        self.keeper.commit(self.session.ignore(number, report.outcome(), report.source, reason))
 
     def _on_fault(self, fault: Exception) -> None:
         self._stop_episode()
@@ -296,7 +296,7 @@ class TunerNode(FieldnavNode):
         voided = any(event.kind == "episode_voided" for event in events)
         if voided:
             self._stop_episode()
-            self.keeper.commit(self._spent("an episode that does not count"))
+            self._spend(self.floor.book(), "an episode that does not count")
             self._restart_work()
         response.success = voided
         response.message = "the last episode does not count and is run again" if voided else "there is none to void"
@@ -324,8 +324,7 @@ class TunerNode(FieldnavNode):
         self._wanted = False
         self._stop_episode()
         self.keeper.commit(events)
-        seconds = self.floor.stop()
-        self.keeper.commit(self.session.spend(seconds, why) if seconds > 0.0 else [])
+        self._spend(self.floor.stop(), why)
 
     # -- telling
 
