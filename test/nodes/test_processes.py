@@ -12,8 +12,10 @@ from pathlib import Path
 import pytest
 
 pytestmark = pytest.mark.ros
+# A build server may have started all this deaf to SIGINT, which is inherited; who sits at a terminal is not.
 PROGRAM = """
-import time
+import signal, time
+signal.signal(signal.SIGINT, signal.default_int_handler)
 from fieldnav_ros.nodes.processes import Processes
 with Processes() as processes:
     processes.start("judge_node", {})
